@@ -1,0 +1,1 @@
+"""The zip and its parts: takes our sheets out and grafts them in. No statistics, no request."""

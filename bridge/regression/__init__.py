@@ -1,0 +1,1 @@
+"""The numeric core: pure functions on arrays, frozen results. Imports nothing of ours."""

@@ -1,0 +1,1 @@
+"""Folders, events, scans, the queue and the worker processes. No workbooks, no statistics."""

@@ -1,0 +1,55 @@
+"""What is read out of one snapshot: tables, the request grid, and the entries on our own sheets."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+from bridge.workbook.request import Scalar
+from bridge.workbook.tables import Table
+
+
+@dataclass(frozen=True, slots=True)
+class RawSheet:
+    """A small sheet cell by cell: stored values and formula texts by zero-based (row, column)."""
+
+    name: str
+    values: Mapping[tuple[int, int], Scalar]
+    formulas: Mapping[tuple[int, int], str]
+
+
+@dataclass(frozen=True, slots=True)
+class Contents:
+    """One workbook, read once. `own` holds our own sheets by our name for them (`fit request`, ...);
+    `sheet_names` all visible worksheets that are not ours, in order; `tables` those that look like a table."""
+
+    sheet_names: tuple[str, ...]
+    tables: Mapping[str, Table]
+    own: Mapping[str, RawSheet]
+
+
+@dataclass(frozen=True, slots=True)
+class NewCase:
+    """One line the user typed on `fit estimates`: its name, and its entries by data column name."""
+
+    name: str
+    entries: Mapping[str, Scalar]
+
+
+@dataclass(frozen=True, slots=True)
+class HistoryLine:
+    """One line of `fit history`, by column header."""
+
+    fields: Mapping[str, Scalar]
+
+
+@dataclass(frozen=True, slots=True)
+class Taken:
+    """Which rows a model uses.
+
+    Indexes count the table's data rows. `used` holds the indexes used, in order; `left_out` maps the others to a
+    reason in words (`hours is blank`, `filtered: hull is glass fibre`).
+    """
+
+    used: tuple[int, ...]
+    left_out: Mapping[int, str]
