@@ -90,11 +90,13 @@ class Sheet:
     `widths` are in characters of the default font, `heights` in points; both zero-based.
     `freeze` is the first unfrozen (row, column). `print_titles` is (first, last) row repeated on each page.
     `print_area` is (first, last) position. `hidden_columns`/`hidden_rows` are helper cells nobody needs to see.
-    `fit_height` 0 means as many pages as needed.
+    `fit_height` 0 means as many pages as needed. `name` is our name for the sheet (`fit rows`); `title` is what its
+    tab says where the user renamed it (empty: the same).
     """
 
     name: str
     cells: Mapping[tuple[int, int], Cell]
+    title: str = ""
     blocks: tuple[Block, ...] = ()
     widths: Mapping[int, float] = field(default_factory=dict)
     heights: Mapping[int, float] = field(default_factory=dict)

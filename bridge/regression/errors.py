@@ -1,14 +1,14 @@
 """What can keep a model from being fitted, as the numeric core sees it.
 
-    RegressionError
-      TooFewRows          rows <= coefficients
-      ConstantResponse    the response does not vary
-      OneLevel            a category has a single level among the rows used
-      UnknownBase         the base level asked for does not occur
-      NothingToFit        no term and no intercept
-      OutOfDomain         log of a number <= 0, root of a negative, reciprocal of 0
-      BadWeight           a weight that is not positive
-      TooManyColumns      the design would be wider than this core fits
+RegressionError
+  TooFewRows          rows <= coefficients
+  ConstantResponse    the response does not vary
+  OneLevel            a category has a single level among the rows used
+  UnknownBase         the base level asked for does not occur
+  NothingToFit        no term and no intercept
+  OutOfDomain         log of a number <= 0, root of a negative, reciprocal of 0
+  BadWeight           a weight that is not positive
+  TooManyColumns      the design would be wider than this core fits
 """
 
 from __future__ import annotations

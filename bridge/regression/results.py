@@ -79,9 +79,9 @@ class Fit:
     """Coefficients and the figures that follow from them.
 
     `r_inverse` (p, p): R^-1 with (X'WX)^-1 = R^-1 R^-T, upper triangular, in the order of the columns.
-    `covariance` (p, p): of the coefficients, made as the spec asks. `covariance_factor` (p, p): C with C C' = covariance
+    `covariance` (p, p): of the coefficients, made as the spec asks. `covariance_factor` (p, p): C, C C' = covariance
     (for ordinary errors residual_sd * r_inverse), so that the standard error of x'b is the length of x'C.
-    `df_interval`: degrees of freedom of t for coefficients and intervals (grouped errors: groups - 1; else df_residual).
+    `df_interval`: degrees of freedom of t for coefficients and intervals (grouped errors: groups - 1).
     `robust_f`: Wald F of all slopes where the errors are not ordinary, else None.
     `r_squared` is about the mean with an intercept, about zero without. `digits` None: exact path.
     `weights` (n,) None: unweighted. `robust_weights` (n,): Huber's, resistant fits only.
@@ -165,8 +165,8 @@ class Influence:
 class Check:
     """A test of an assumption.
 
-    key: spread (Koenker), spread_any_form (White), normality (Shapiro-Wilk or Anderson-Darling), serial (Durbin-Watson),
-    serial_order (Breusch-Godfrey), form (RESET), lack_of_fit. `p` NaN: not available, `note` says why.
+    key: spread (Koenker), spread_any_form (White), normality (Shapiro-Wilk or Anderson-Darling),
+    serial (Durbin-Watson), serial_order (Breusch-Godfrey), form (RESET), lack_of_fit. `p` NaN: not available, `note` says why.
     `estimate`: an extra figure a sentence needs (the first-order correlation, ...), else NaN.
     """
 
@@ -193,7 +193,7 @@ class TermVif:
 
 @dataclass(frozen=True, slots=True)
 class Collinearity:
-    """Condition indexes (p,) largest last and variance shares (p indexes, p coefficients); columns scaled to length 1."""
+    """Condition indexes (p,) largest last, variance shares (p indexes, p coefficients); columns scaled to length 1."""
 
     terms: tuple[TermVif, ...]
     condition_indexes: Array
@@ -204,7 +204,7 @@ class Collinearity:
 class CrossValidation:
     """Miss on rows left out in turn, original units: root mean square, as a share of the mean observed, and by fold.
 
-    `predicted` (n,): each row's estimate from the fit without its fold, original units (log and root responses: the mean).
+    `predicted` (n,): each row's estimate from the fit without its fold, original units (transformed responses: mean).
     `grouped`: whole groups were left out together. `includes_search`: the subset search was redone within each fold.
     """
 
@@ -233,7 +233,7 @@ class BackTransform:
 
 @dataclass(frozen=True, slots=True)
 class BoxCox:
-    """Profile likelihood of the power of the response: best power, its 95% interval, and the plain power nearest to it."""
+    """Profile likelihood of the power of the response: best power, its 95% interval, the plain power nearest to it."""
 
     power: float
     low: float

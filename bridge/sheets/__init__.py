@@ -1,1 +1,1 @@
-"""Laying out each of our sheets from the results: values, live formulas, formats, charts, words. No zip parts, no computing of fits."""
+"""Laying out each of our sheets from the results: values, live formulas, formats, charts, words."""
