@@ -166,7 +166,8 @@ class Check:
     """A test of an assumption.
 
     key: spread (Koenker), spread_any_form (White), normality (Shapiro-Wilk or Anderson-Darling),
-    serial (Durbin-Watson), serial_order (Breusch-Godfrey), form (RESET), lack_of_fit. `p` NaN: not available, `note` says why.
+    serial (Durbin-Watson), serial_order (Breusch-Godfrey), form (RESET), lack_of_fit.
+    `p` NaN: not available, `note` says why.
     `estimate`: an extra figure a sentence needs (the first-order correlation, ...), else NaN.
     """
 
