@@ -1,0 +1,206 @@
+"""How many digits a figure deserves, on a sheet and in a sentence.
+
+An uncertainty is stated to two significant digits and the estimate to the same decimal place
+(JCGM 100:2008, GUM, 7.2.6); tables of figures that people copy get one digit more (common practice).
+Cells hold the full double; only what is shown is rounded.
+"""
+
+from __future__ import annotations
+
+import math
+import re
+from collections.abc import Iterable
+
+from bridge.page.cells import Cell, Format
+
+PERCENT = "0.0%"
+WHOLE = "#,##0"
+PLAIN_WHOLE = "0"
+RATIO = "0.000"
+TWO_PLACES = "0.00"
+P_VALUE = "[<0.0001]0.0E+00;0.0000"
+DATE = "yyyy\\-mm\\-dd"
+
+_GROUP_FROM = 10_000
+_LARGEST_PLAIN = 1e9
+_SMALLEST_PLAIN = 1e-5
+_THOUSANDS = "\u00a0"  # a space that does not break: neither a decimal point nor a decimal comma to anybody
+
+
+def decimals(reference: float, digits: int) -> int:
+    """Decimal places that show a number of the size of `reference` to `digits` significant digits (0 at least).
+
+    A reference of 0, NaN or infinity counts as 1.
+    """
+    return max(0, digits - 1 - _exponent(reference))
+
+
+def number_format(reference: float, digits: int) -> str:
+    """The number format that shows numbers of the size of `reference` to `digits` significant digits.
+
+    Plain decimals, thousands grouped, from 0.00001 to a thousand million; powers of ten outside.
+    """
+    if not _is_plain(reference):
+        return _scientific(digits)
+    return places_format(reference, decimals(reference, digits))
+
+
+def places_format(reference: float, places: int) -> str:
+    """The number format with `places` decimals, thousands grouped where `reference` has that size."""
+    whole = WHOLE if abs(reference) >= 1000 else "0"
+    return f"{whole}.{'0' * places}" if places > 0 else whole
+
+
+def uncertain_format(value: float, uncertainty: float, digits: int = 2) -> str:
+    """The number format for `value` that shows its `uncertainty` to `digits` digits and no decimal more.
+
+    Without an uncertainty (0, NaN) six significant digits. At least two digits of the value are always shown.
+    """
+    if not (math.isfinite(uncertainty) and uncertainty > 0):
+        return number_format(value, 6)
+    wanted = _exponent(value) - _exponent(uncertainty) + digits
+    return number_format(value, min(max(wanted, 2), 15))
+
+
+def column_format(values: Iterable[float], uncertainty: float = math.nan, digits: int = 3) -> str:
+    """One number format for a column: decimals by `uncertainty` (else by the largest value), grouped by the largest.
+
+    Powers of ten where the largest is outside the plain sizes, or where `digits` of the uncertainty would need more
+    than eight decimals.
+    """
+    finite = [abs(value) for value in values if math.isfinite(value)]
+    largest = max(finite, default=0.0)
+    known = math.isfinite(uncertainty) and uncertainty > 0
+    places = decimals(uncertainty, digits) if known else decimals(largest, max(digits, 4))
+    if not _is_plain(largest) or places > 8:
+        return _scientific(max(digits, 4))
+    return places_format(largest, places)
+
+
+def with_unit(number: str, unit: str) -> str:
+    """A number format followed by a unit, as a literal text of the format."""
+    kept = unit.replace('"', "").strip()
+    return f'{number}" {kept}"' if kept else number
+
+
+def figure_cell(value: float, look: Format) -> Cell:
+    """A cell for a figure that may not exist: NaN leaves it empty, an infinite one is said in words."""
+    if math.isnan(value):
+        return Cell(None, look)
+    if math.isinf(value):
+        return Cell("unbounded", look)
+    return Cell(value, look)
+
+
+# --- in sentences ------------------------------------------------------------------------------
+
+
+def sentence_number(value: float, digits: int = 3) -> str:
+    """`value` to `digits` significant digits as a sentence shows it: `0.0123`, `114`, `12 300`, `3.1E-7`.
+
+    Whole parts are never rounded away: 12,345 to 3 digits is `12 300`. NaN gives `not available`.
+    """
+    if math.isnan(value):
+        return "not available"
+    if math.isinf(value):
+        return "unbounded"
+    if value == 0:
+        return "0"
+    rounded = _rounded(value, digits)
+    if not _is_plain(rounded):
+        mantissa, exponent = f"{rounded:.{max(digits - 1, 0)}E}".split("E")
+        return f"{_minus(mantissa)}E{int(exponent)}"
+    return _grouped(rounded, decimals(rounded, digits))
+
+
+def placed_number(value: float, uncertainty: float, digits: int = 2) -> str:
+    """`value` in a sentence, to the decimal place at which `uncertainty` has `digits` significant digits."""
+    if not (math.isfinite(uncertainty) and uncertainty > 0) or not math.isfinite(value):
+        return sentence_number(value, 6)
+    places = digits - 1 - _exponent(uncertainty)
+    rounded = round(value, places)
+    if rounded != 0 and not _is_plain(rounded):
+        return sentence_number(value, max(2, _exponent(value) + 1 + places))
+    return _grouped(rounded, max(0, places))
+
+
+def plain_number(value: float) -> str:
+    """A number as somebody typed it: at most eight significant digits, no zeros at the end."""
+    if not math.isfinite(value):
+        return sentence_number(value)
+    rounded = _rounded(value, 8)
+    if rounded != 0 and not _is_plain(rounded):
+        return f"{rounded:.7g}".replace("e+", "E").replace("e-", "E-")
+    text = _grouped(rounded, decimals(rounded, 8))
+    return text.rstrip("0").rstrip(".") if "." in text else text
+
+
+def percent(fraction: float, digits: int = 2) -> str:
+    """A fraction as a percentage to `digits` significant digits, at most two decimals: `9.4%`, `17%`, `0.03%`."""
+    value = _rounded(fraction * 100, digits)
+    return f"{_grouped(value, min(2, decimals(value, digits)))}%"
+
+
+def p_words(p: float) -> str:
+    """A p value as words show it: `p = 0.0003`, `p < 0.0001`, or `no p value` where there is none."""
+    if math.isnan(p):
+        return "no p value"
+    if p < 1e-4:
+        return "p < 0.0001"
+    return f"p = {sentence_number(p, 2) if p < 0.995 else '1.0'}"
+
+
+# --- what a cell will show ---------------------------------------------------------------------
+
+
+def shown(value: float, code: str) -> str:
+    """The text a cell shows for `value` under one of the number formats made here (decimal point, comma groups)."""
+    section = _section(value, code)
+    bare = re.sub(r'"[^"]*"|\\.', "", section)
+    literal = "".join(re.findall(r'"([^"]*)"', section))
+    if bare == "General":
+        return f"{value:.10g}" + literal
+    if "y" in bare:
+        return "2026-12-01"
+    places = len(bare.split(".")[1].rstrip("%").split("E")[0]) if "." in bare else 0
+    if "E" in bare:
+        return f"{value:.{places}E}" + literal
+    scale, mark = (100, "%") if bare.endswith("%") else (1, "")
+    comma = "," if "," in bare else ""
+    return f"{value * scale:{comma}.{places}f}{mark}" + literal
+
+
+def _section(value: float, code: str) -> str:
+    sections = code.split(";")
+    condition = re.match(r"\[<([0-9.]+)\]", sections[0])
+    if condition is None:
+        return sections[0]
+    return sections[0][condition.end() :] if value < float(condition.group(1)) else sections[1]
+
+
+def _exponent(value: float) -> int:
+    if value == 0 or not math.isfinite(value):
+        return 0
+    return int(f"{abs(value):.14e}".split("e")[1])
+
+
+def _rounded(value: float, digits: int) -> float:
+    return float(f"{value:.{max(digits - 1, 0)}e}")
+
+
+def _is_plain(value: float) -> bool:
+    return value == 0 or not math.isfinite(value) or _SMALLEST_PLAIN <= abs(value) < _LARGEST_PLAIN
+
+
+def _scientific(digits: int) -> str:
+    return f"0.{'0' * (digits - 1)}E+00" if digits > 1 else "0E+00"
+
+
+def _grouped(value: float, places: int) -> str:
+    text = f"{abs(value):,.{places}f}" if abs(value) >= _GROUP_FROM else f"{abs(value):.{places}f}"
+    sign = "\u2212" if value < 0 and float(text.replace(",", "")) != 0 else ""
+    return sign + text.replace(",", _THOUSANDS)
+
+
+def _minus(text: str) -> str:
+    return text.replace("-", "\u2212")
