@@ -12,6 +12,7 @@ import re
 from collections.abc import Iterable
 
 from bridge.page.cells import Cell, Format
+from bridge.regression.results import ModelResult
 
 PERCENT = "0.0%"
 WHOLE = "#,##0"
@@ -24,6 +25,7 @@ DATE = "yyyy\\-mm\\-dd"
 _GROUP_FROM = 10_000
 _LARGEST_PLAIN = 1e9
 _SMALLEST_PLAIN = 1e-5
+_ROUNDING = 1e-9  # a spread this small beside the values is rounding, not scatter
 _THOUSANDS = "\u00a0"  # a space that does not break: neither a decimal point nor a decimal comma to anybody
 
 
@@ -59,7 +61,7 @@ def uncertain_format(value: float, uncertainty: float, digits: int = 2) -> str:
     if not (math.isfinite(uncertainty) and uncertainty > 0):
         return number_format(value, 6)
     wanted = _exponent(value) - _exponent(uncertainty) + digits
-    return number_format(value, min(max(wanted, 2), 15))
+    return number_format(value, min(max(wanted, 2), 15 if _is_plain(value) else 8))
 
 
 def column_format(values: Iterable[float], uncertainty: float = math.nan, digits: int = 3) -> str:
@@ -70,11 +72,31 @@ def column_format(values: Iterable[float], uncertainty: float = math.nan, digits
     """
     finite = [abs(value) for value in values if math.isfinite(value)]
     largest = max(finite, default=0.0)
-    known = math.isfinite(uncertainty) and uncertainty > 0
+    known = math.isfinite(uncertainty) and uncertainty > _ROUNDING * largest
     places = decimals(uncertainty, digits) if known else decimals(largest, max(digits, 4))
     if not _is_plain(largest) or places > 8:
         return _scientific(max(digits, 4))
     return places_format(largest, places)
+
+
+def typed_format(values: Iterable[float], most: int = 6) -> str:
+    """The number format for values as somebody typed them: as many decimals as any of them has, `most` at most."""
+    finite = [value for value in values if math.isfinite(value)]
+    largest = max((abs(value) for value in finite), default=0.0)
+    if not _is_plain(largest):
+        return _scientific(4)
+    return places_format(largest, max((_typed_places(value, most) for value in finite), default=0))
+
+
+def unit_sd(result: ModelResult) -> float:
+    """How far single cases scatter in the response's own units: the cross-validated miss, else the residual SD.
+
+    NaN where neither is known in those units.
+    """
+    miss = result.cross_validation.rmse
+    if math.isfinite(miss) and miss > 0:
+        return miss
+    return result.fit.residual_sd if result.back is None else math.nan
 
 
 def with_unit(number: str, unit: str) -> str:
@@ -98,7 +120,7 @@ def figure_cell(value: float, look: Format) -> Cell:
 def sentence_number(value: float, digits: int = 3) -> str:
     """`value` to `digits` significant digits as a sentence shows it: `0.0123`, `114`, `12 300`, `3.1E-7`.
 
-    Whole parts are never rounded away: 12,345 to 3 digits is `12 300`. NaN gives `not available`.
+    NaN gives `not available`.
     """
     if math.isnan(value):
         return "not available"
@@ -120,7 +142,7 @@ def placed_number(value: float, uncertainty: float, digits: int = 2) -> str:
     places = digits - 1 - _exponent(uncertainty)
     rounded = round(value, places)
     if rounded != 0 and not _is_plain(rounded):
-        return sentence_number(value, max(2, _exponent(value) + 1 + places))
+        return sentence_number(value, min(max(2, _exponent(value) + 1 + places), 6))
     return _grouped(rounded, max(0, places))
 
 
@@ -190,6 +212,11 @@ def _rounded(value: float, digits: int) -> float:
 
 def _is_plain(value: float) -> bool:
     return value == 0 or not math.isfinite(value) or _SMALLEST_PLAIN <= abs(value) < _LARGEST_PLAIN
+
+
+def _typed_places(value: float, most: int) -> int:
+    text = f"{value:.{most}f}"
+    return len(text.rstrip("0").split(".")[1])
 
 
 def _scientific(digits: int) -> str:

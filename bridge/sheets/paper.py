@@ -1,0 +1,118 @@
+"""A sheet while it is being laid out from top to bottom; `sheet` makes the frozen value of it."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, field
+from typing import Any
+
+from bridge.page.cells import Cell, Format, Value
+from bridge.page.charts import Chart
+from bridge.page.sheet import Block, Link, Merge, Sheet
+from bridge.sheets import measure, style, top
+from bridge.sheets.book import Book
+
+ROW_POINTS = 15.0
+
+
+@dataclass
+class Paper:
+    """Cells, merges, heights and charts as they are put down; `row` is the next free row.
+
+    `widths` (column units, zero-based columns) are known from the start: heights follow from them.
+    """
+
+    name: str
+    widths: dict[int, float]
+    row: int = 0
+    cells: dict[tuple[int, int], Cell] = field(default_factory=dict)
+    blocks: list[Block] = field(default_factory=list)
+    merges: list[Merge] = field(default_factory=list)
+    heights: dict[int, float] = field(default_factory=dict)
+    links: list[Link] = field(default_factory=list)
+    charts: list[Chart] = field(default_factory=list)
+
+    def top(self, book: Book, title: str, what: str) -> None:
+        """The lines that every sheet begins with; the next free row is the first after them."""
+        self.cells.update(top.lines(book, title, what))
+        self.heights.update(top.HEIGHTS)
+        self.row = top.ROWS
+
+    def put(self, column: int, value: Value, look: Format, row: int | None = None) -> None:
+        """One cell, in the current row unless told otherwise; the row is not left."""
+        self.cells[(self.row if row is None else row, column)] = Cell(value, look)
+
+    def line(self, values: Sequence[Value], looks: Sequence[Format], column: int = 0) -> None:
+        """A row of cells from `column` on, as high as its wrapped texts need; then the next row."""
+        for at, (value, look) in enumerate(zip(values, looks, strict=True)):
+            self.put(column + at, value, look)
+            if look.wrap and isinstance(value, str):
+                self.grow(value, column + at, column + at, look)
+        self.row += 1
+
+    def paragraph(self, text: str, first: int, last: int, look: Format = style.PARAGRAPH, gap: float = 4.0) -> None:
+        """A wrapped text across the columns `first` to `last`, `gap` points of air under it; then the next row."""
+        self.spread(text, first, last, look)
+        self.heights[self.row] = max(self.heights[self.row], self._height(text, first, last, look) + gap)
+        self.row += 1
+
+    def spread(self, text: str, first: int, last: int, look: Format) -> None:
+        """A text in the cells `first` to `last` of the current row, merged; the row grows with it and is not left."""
+        for column in range(first, last + 1):
+            self.put(column, text if column == first else None, look)
+        if last > first:
+            self.merges.append(Merge((self.row, first), (self.row, last)))
+        self.grow(text, first, last, look)
+
+    def heading(self, text: str, column: int = 0, look: Format = style.HEADING) -> None:
+        """A heading with its own height; then the next row."""
+        self.put(column, text, look)
+        self.heights[self.row] = max(self.heights.get(self.row, ROW_POINTS), look.size * 1.6)
+        self.row += 1
+
+    def gap(self, points: float = 8.0) -> None:
+        """A narrow empty row."""
+        self.heights[self.row] = points
+        self.row += 1
+
+    def grow(self, text: str, first: int, last: int, look: Format) -> None:
+        """Make the current row high enough for a text wrapped in the columns `first` to `last`."""
+        self.heights[self.row] = max(self.heights.get(self.row, ROW_POINTS), self._height(text, first, last, look))
+
+    def span(self, first: int, last: int) -> float:
+        """Width of the columns `first` to `last` together, in column units."""
+        return sum(self.widths.get(column, 8.43) for column in range(first, last + 1))
+
+    def link(self, column: int, location: str, tooltip: str = "") -> None:
+        """Make the current row's cell in `column` lead to `location`."""
+        self.links.append(Link(self.row, column, location, tooltip))
+
+    def points(self, first: int, last: int) -> float:
+        """Height of the rows `first` to `last` (not included) in points."""
+        return sum(self.heights.get(row, ROW_POINTS) for row in range(first, last))
+
+    def sheet(self, **rest: Any) -> Sheet:
+        """The finished sheet; `rest` are further fields of `Sheet`."""
+        return Sheet(
+            name=self.name,
+            cells=self.cells,
+            blocks=tuple(self.blocks),
+            widths=self.widths,
+            heights=self.heights,
+            merges=tuple(self.merges),
+            links=tuple(self.links),
+            charts=tuple(self.charts),
+            **rest,
+        )
+
+    def _height(self, text: str, first: int, last: int, look: Format) -> float:
+        return measure.height(text, self.span(first, last), look.size, look.bold)
+
+
+def merged(*parts: Mapping[int, float]) -> dict[int, float]:
+    """Column widths from several sources; the widest counts."""
+    widths: dict[int, float] = {}
+    for part in parts:
+        for column, width in part.items():
+            widths[column] = max(widths.get(column, 0.0), width)
+    return widths
