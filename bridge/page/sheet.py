@@ -90,7 +90,8 @@ class Sheet:
     `widths` are in characters of the default font, `heights` in points; both zero-based.
     `freeze` is the first unfrozen (row, column). `print_titles` is (first, last) row repeated on each page.
     `print_area` is (first, last) position. `hidden_columns`/`hidden_rows` are helper cells nobody needs to see.
-    `fit_height` 0 means as many pages as needed. `name` is our name for the sheet (`fit rows`); `title` is what its
+    `fit_width` and `fit_height` are pages to print on, 0 means as many as needed. `title_columns` is (first, last)
+    column repeated on each page. `name` is our name for the sheet (`fit rows`); `title` is what its
     tab says where the user renamed it (empty: the same).
     """
 
@@ -108,7 +109,9 @@ class Sheet:
     freeze: tuple[int, int] | None = None
     print_titles: tuple[int, int] | None = None
     print_area: tuple[tuple[int, int], tuple[int, int]] | None = None
+    title_columns: tuple[int, int] | None = None
     landscape: bool = True
+    fit_width: int = 1
     fit_height: int = 0
     tab_color: str | None = None
     hidden_columns: frozenset[int] = frozenset()
