@@ -10,12 +10,13 @@ from dataclasses import dataclass
 
 @dataclass(frozen=True, slots=True)
 class Axis:
-    """One axis: its title (with unit), and bounds where the default would mislead."""
+    """One axis: its title (with unit), and bounds and step between its numbers where the default would mislead."""
 
     title: str
     number_format: str = "General"
     minimum: float | None = None
     maximum: float | None = None
+    step: float | None = None
     gridlines: bool = True
     hidden_labels: bool = False
 

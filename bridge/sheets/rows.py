@@ -61,6 +61,7 @@ class Section:
         return self.starts[model] + self.keys[model].index(key)
 
 
+_TEXT = replace(style.ROW, indent=1)  # beside numbers that end at their cell's right edge
 _HEADERS = {
     "used": "used",
     "observed": "observed",
@@ -95,7 +96,9 @@ def lay_out(book: Book) -> Sheet:
         title=book.title("fit rows"),
         freeze=(found[0].first_row, 2) if found else None,
         print_titles=(found[0].header_row, found[0].header_row) if len(found) == 1 else None,
+        title_columns=(0, 1) if found else None,
         print_area=((0, 0), (last, across)),
+        fit_width=max((len(section.models) for section in found), default=1),  # one column set a page
         tab_color=style.TAB_DETAIL,
     )
 
@@ -195,16 +198,16 @@ def _note(paper: Paper, section: Section) -> None:
 def _heads(paper: Paper, section: Section, book: Book) -> None:
     row = section.header_row
     head = replace(style.HEADER, wrap=True)
-    head_right = replace(head, align="right")
+    head_right, head_text = replace(head, align="right"), replace(head, indent=1)
     paper.heights[row] = 40.0
     paper.put(0, "row", head_right, row)
-    paper.put(1, "label", head, row)
+    paper.put(1, "label", head_text, row)
     for model in section.models:
         result, start = _result(model), section.starts[model.name]
         paper.put(start, f"{model.name}  {_band(section.table, result)}", style.HEADING, row - 2)
         for at, key in enumerate(section.keys[model.name]):
             header = _HEADERS[key] + (f" ({result.spec.response_shape.value})" if key == "on_scale" else "")
-            paper.put(start + at, header, head if key in ("used", "remark") else head_right, row)
+            paper.put(start + at, header, {"used": head, "remark": head_text}.get(key, head_right), row)
             unit = _unit(section.table, result, key)
             if unit:
                 paper.put(start + at, unit, replace(style.SUBTITLE, align="right"), row - 1)
@@ -251,8 +254,8 @@ def _labels(section: Section) -> BlockColumn:
     name = next((model.request.label for model in section.models if model.request.label), None)
     column = words.column_of(section.table, name) if name else None
     if column is None:
-        return BlockColumn([""] * len(section.lines), style.ROW)
-    return BlockColumn([label(column, int(line)) for line in section.lines], style.ROW)
+        return BlockColumn([""] * len(section.lines), _TEXT)
+    return BlockColumn([label(column, int(line)) for line in section.lines], _TEXT)
 
 
 def label(column: DataColumn, row: int) -> str:
@@ -281,7 +284,7 @@ def _column(key: str, result: ModelResult, model: ModelSheet, spread: Spread, se
     if key == "used":
         return BlockColumn(_used_words(model, section.lines, len(section.table.rows)), style.ROW)
     if key == "remark":
-        return BlockColumn(_remark_words(result, _used(model), section), style.ROW)
+        return BlockColumn(_remark_words(result, _used(model), section), _TEXT)
     values = case_values(result, key)
     return BlockColumn(spread(values), replace(style.NUMBER, number_format=_format(result, key, values)))
 
@@ -344,7 +347,7 @@ def _width(column: BlockColumn, look: Format) -> float:
         finite = column.values[np.isfinite(column.values)]
         ends = (float(finite.min()), float(finite.max())) if len(finite) else (0.0,)
         return measure.widest(figures.shown(value, look.number_format) for value in ends)
-    return min(WIDEST_TEXT, measure.widest(set(column.values)))
+    return min(WIDEST_TEXT, measure.widest(set(column.values)) + 1.5 * look.indent)
 
 
 def _last_column(section: Section) -> int:

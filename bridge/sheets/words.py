@@ -113,6 +113,15 @@ def unit_in(table: Table | None, name: str) -> str:
     return unit_of(column_of(table, name))
 
 
+def label_in(table: Table | None, label: str) -> str:
+    """A design column's or term's label with the units taken out of its headers: `log length x hull steel`."""
+    columns = table.columns if table is not None else ()
+    for column in sorted(columns, key=lambda one: -len(one.name)):
+        if column.unit:
+            label = label.replace(column.name, bare_name(column))
+    return label
+
+
 def with_unit(number: str, unit: str) -> str:
     """`19 hours`, `22 m`, `17%`; the number alone without a unit."""
     if not unit:
