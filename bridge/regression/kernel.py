@@ -21,25 +21,26 @@ Number = Decimal | float  # Decimal from the exact path (28 digits and more), fl
 
 
 @dataclass(frozen=True, slots=True)
-class TermSums:
-    """Sums of squares of one term: given all other terms (`last`), and given the terms before it (`in_order`)."""
+class SourceSum:
+    """A source of variation (a term, or one column of a number term) with its degrees of freedom and its sum."""
 
-    term: str
+    source: str
     df: int
-    last: Number
-    in_order: Number
+    ss: Number
 
 
 @dataclass(frozen=True, slots=True)
 class Sums:
     """Weighted sums of squares: of the residuals, of the response (about its mean with an intercept, else about zero).
 
+    `last`: each term given all others; `in_order`: each term given those before it, powers and bends one by one.
     `pure_error` and `pure_error_df` are None and 0 where no two rows agree in all predictors.
     """
 
     residual: Number
     total: Number
-    terms: tuple[TermSums, ...]
+    last: tuple[SourceSum, ...]
+    in_order: tuple[SourceSum, ...]
     pure_error: Number | None
     pure_error_df: int
 
