@@ -2,9 +2,10 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from dataclasses import dataclass
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, field
 from datetime import datetime
+from typing import Protocol
 
 from bridge.messages import Problem
 from bridge.regression.results import ModelResult, Nested
@@ -44,9 +45,21 @@ class ModelSheet:
         return self.request.name
 
 
+class Finding(Protocol):
+    """Something found in the data before fitting, in words."""
+
+    @property
+    def text(self) -> str:
+        """One or two sentences that name the cells concerned."""
+        ...
+
+
 @dataclass(frozen=True, slots=True)
 class Book:
-    """All of it. `titles` maps our sheet names to what their tabs say (the user may have renamed one)."""
+    """All of it. `titles` maps our sheet names to what their tabs say (the user may have renamed one).
+
+    `findings`: per data sheet, what was found when its data were examined before fitting.
+    """
 
     fitted_at: datetime
     request: Request
@@ -57,6 +70,7 @@ class Book:
     history: tuple[HistoryLine, ...]
     titles: Mapping[str, str]
     problems: tuple[Problem, ...] = ()
+    findings: Mapping[str, Sequence[Finding]] = field(default_factory=dict)
 
     def title(self, name: str) -> str:
         """What the tab of our sheet `name` says."""

@@ -212,9 +212,8 @@ def _normal(cases: _Cases) -> Picture | None:
         return None
     # plotting positions (i - 3/8) / (n + 1/4), Blom 1958
     quantiles = ndtri((np.arange(1, n + 1) - 0.375) / (n + 0.25))
-    kept = (
-        rows.thinned(n, (np.abs(quantiles) > 2.0) * np.abs(quantiles), MOST_POINTS) if n > MOST_POINTS else slice(None)
-    )
+    tails = np.where(np.abs(quantiles) > 2.0, np.abs(quantiles), 0.0)
+    kept = rows.thinned(n, tails, MOST_POINTS) if n > MOST_POINTS else np.arange(n)
     x = cases.behind("normal quantile", quantiles[kept].tolist())
     y = cases.behind("residual, sorted", finite[kept].tolist())
     end = max(abs(float(quantiles[0])), 2.0)

@@ -114,6 +114,11 @@ def figure_cell(value: float, look: Format) -> Cell:
     return Cell(value, look)
 
 
+def rounded(value: float, digits: int) -> float:
+    """`value` to `digits` significant digits."""
+    return float(f"{value:.{max(digits - 1, 0)}e}")
+
+
 # --- in sentences ------------------------------------------------------------------------------
 
 
@@ -128,11 +133,11 @@ def sentence_number(value: float, digits: int = 3) -> str:
         return "unbounded"
     if value == 0:
         return "0"
-    rounded = _rounded(value, digits)
-    if not _is_plain(rounded):
-        mantissa, exponent = f"{rounded:.{max(digits - 1, 0)}E}".split("E")
+    kept = rounded(value, digits)
+    if not _is_plain(kept):
+        mantissa, exponent = f"{kept:.{max(digits - 1, 0)}E}".split("E")
         return f"{_minus(mantissa)}E{int(exponent)}"
-    return _grouped(rounded, decimals(rounded, digits))
+    return _grouped(kept, decimals(kept, digits))
 
 
 def placed_number(value: float, uncertainty: float, digits: int = 2) -> str:
@@ -140,26 +145,26 @@ def placed_number(value: float, uncertainty: float, digits: int = 2) -> str:
     if not (math.isfinite(uncertainty) and uncertainty > 0) or not math.isfinite(value):
         return sentence_number(value, 6)
     places = digits - 1 - _exponent(uncertainty)
-    rounded = round(value, places)
-    if rounded != 0 and not _is_plain(rounded):
+    kept = round(value, places)
+    if kept != 0 and not _is_plain(kept):
         return sentence_number(value, min(max(2, _exponent(value) + 1 + places), 6))
-    return _grouped(rounded, max(0, places))
+    return _grouped(kept, max(0, places))
 
 
 def plain_number(value: float) -> str:
     """A number as somebody typed it: at most eight significant digits, no zeros at the end."""
     if not math.isfinite(value):
         return sentence_number(value)
-    rounded = _rounded(value, 8)
-    if rounded != 0 and not _is_plain(rounded):
-        return f"{rounded:.7g}".replace("e+", "E").replace("e-", "E-")
-    text = _grouped(rounded, decimals(rounded, 8))
+    kept = rounded(value, 8)
+    if kept != 0 and not _is_plain(kept):
+        return f"{kept:.7g}".replace("e+", "E").replace("e-", "E-")
+    text = _grouped(kept, decimals(kept, 8))
     return text.rstrip("0").rstrip(".") if "." in text else text
 
 
 def percent(fraction: float, digits: int = 2) -> str:
     """A fraction as a percentage to `digits` significant digits, at most two decimals: `9.4%`, `17%`, `0.03%`."""
-    value = _rounded(fraction * 100, digits)
+    value = rounded(fraction * 100, digits)
     return f"{_grouped(value, min(2, decimals(value, digits)))}%"
 
 
@@ -169,7 +174,7 @@ def p_words(p: float) -> str:
         return "no p value"
     if p < 1e-4:
         return "p < 0.0001"
-    return f"p = {sentence_number(p, 2) if p < 0.995 else '1.0'}"
+    return f"p = {p:.{4 if p < 1e-3 else 3 if p < 0.1 else 2}f}"
 
 
 # --- what a cell will show ---------------------------------------------------------------------
@@ -204,10 +209,6 @@ def _exponent(value: float) -> int:
     if value == 0 or not math.isfinite(value):
         return 0
     return int(f"{abs(value):.14e}".split("e")[1])
-
-
-def _rounded(value: float, digits: int) -> float:
-    return float(f"{value:.{max(digits - 1, 0)}e}")
 
 
 def _is_plain(value: float) -> bool:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
 
 import numpy as np
@@ -36,21 +37,30 @@ def trace(result: ModelResult, column: str) -> Trace | None:
         if f.kind == "hinge" and reach.low < f.knot < reach.high
     ]
     x = np.unique([*np.linspace(reach.low, reach.high, POINTS), *knots])
-    return Trace(x, _estimates(result, x))
+    return Trace(x, _estimates(result, {column: x}, {}))
 
 
-def _factor(factor: Factor, x: Floats) -> Floats:
+def one(result: ModelResult, numbers: Mapping[str, float], levels: Mapping[str, str]) -> Estimates:
+    """Estimates for a single case, arrays of length 1."""
+    return _estimates(result, {name: np.array([value]) for name, value in numbers.items()}, levels)
+
+
+def _factor(factor: Factor, x: Mapping[str, Floats], levels: Mapping[str, str]) -> Floats:
+    if factor.kind == "level":
+        return np.array([float(levels[factor.column] == factor.level)])
+    values = x[factor.column]
     if factor.kind == "hinge":
-        return np.maximum(x - factor.knot, 0.0)
+        return np.maximum(values - factor.knot, 0.0)
     if factor.kind == "power":
-        return np.asarray(x**factor.exponent)
-    return np.asarray({"log": np.log, "root": np.sqrt, "reciprocal": np.reciprocal}[factor.kind](x))
+        return np.asarray(values**factor.exponent)
+    return np.asarray({"log": np.log, "root": np.sqrt, "reciprocal": np.reciprocal}[factor.kind](values))
 
 
-def _estimates(result: ModelResult, x: Floats) -> Estimates:
+def _estimates(result: ModelResult, x: Mapping[str, Floats], levels: Mapping[str, str]) -> Estimates:
     fit = result.fit
+    size = max((len(v) for v in x.values()), default=1)
     X = np.column_stack(
-        [np.prod([np.ones_like(x), *(_factor(f, x) for f in c.factors)], axis=0) for c in result.design.columns]
+        [np.prod([np.ones(size), *(_factor(f, x, levels) for f in c.factors)], axis=0) for c in result.design.columns]
     )
     eta = X @ fit.coefficients
     q = stdtrit(fit.df_interval, 0.5 + result.spec.level / 2)

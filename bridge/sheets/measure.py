@@ -14,7 +14,7 @@ from collections.abc import Iterable
 UNIT_PIXELS = 7.0
 PADDING_PIXELS = 5.0
 _LINE_POINTS = 1.28  # of the type size
-_ROOM = 1.04  # programs differ a little in how they set a line
+_ROOM = 1.04  # programs differ a little in how they set a line that may not wrap
 _OTHER = 556
 
 _WIDTHS: dict[str, int] = {}
@@ -57,7 +57,7 @@ def units(text: str, size: float = 10.0, bold: bool = False) -> float:
 
 def lines(text: str, width: float, size: float = 10.0, bold: bool = False) -> int:
     """Lines that the text takes when wrapped in `width` column units (several columns: their sum)."""
-    room = max(width * UNIT_PIXELS - PADDING_PIXELS, size) / _ROOM
+    room = max(width * UNIT_PIXELS - PADDING_PIXELS, size)
     return sum(_wrapped(part, room, size, bold) for part in text.split("\n"))
 
 

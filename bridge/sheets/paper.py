@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Any
 
 from bridge.page.cells import Cell, Format, Value
@@ -32,10 +32,12 @@ class Paper:
     links: list[Link] = field(default_factory=list)
     charts: list[Chart] = field(default_factory=list)
 
-    def top(self, book: Book, title: str, what: str) -> None:
-        """The lines that every sheet begins with; the next free row is the first after them."""
+    def top(self, book: Book, title: str, what: str, last: int) -> None:
+        """The lines that every sheet begins with, across the columns up to `last`; the next free row comes after."""
         self.cells.update(top.lines(book, title, what))
         self.heights.update(top.HEIGHTS)
+        self.row = 1
+        self.spread(str(self.cells[(1, 0)].value), 0, last, replace(style.SUBTITLE, wrap=True))
         self.row = top.ROWS
 
     def put(self, column: int, value: Value, look: Format, row: int | None = None) -> None:
@@ -63,6 +65,22 @@ class Paper:
         if last > first:
             self.merges.append(Merge((self.row, first), (self.row, last)))
         self.grow(text, first, last, look)
+
+    def beside(self, text: str, first: int, last: int, row: int, look: Format = style.PARAGRAPH) -> int:
+        """A text in the columns `first` to `last` over as many rows from `row` on as it needs, whatever their heights.
+
+        Returns the row after it. Rows that something else has laid out keep their heights.
+        """
+        wanted, end = self._height(text, first, last, look), row
+        while wanted > 0:
+            wanted -= self.heights.get(end, ROW_POINTS)
+            end += 1
+        for at in range(row, end):
+            for column in range(first, last + 1):
+                self.put(column, text if (at, column) == (row, first) else None, look, at)
+        if (end - 1, last) != (row, first):
+            self.merges.append(Merge((row, first), (end - 1, last)))
+        return end
 
     def heading(self, text: str, column: int = 0, look: Format = style.HEADING) -> None:
         """A heading with its own height; then the next row."""

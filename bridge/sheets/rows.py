@@ -85,7 +85,8 @@ def lay_out(book: Book) -> Sheet:
     """The sheet `fit rows`."""
     found = sections(book)
     paper = Paper("fit rows", {0: 8.0, 1: 14.0, 2: 1.5})
-    paper.top(book, "Row by row", "One line per data row: what was used, what was left out and why, and how each fits.")
+    what = "One line per data row: what was used, what was left out and why, and how each row fits."
+    paper.top(book, "Row by row", what, 11)
     for section in found:
         _note(paper, section)
         _heads(paper, section, book)

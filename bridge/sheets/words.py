@@ -6,7 +6,9 @@ import re
 from collections.abc import Sequence
 from datetime import date, datetime, timedelta
 
+from bridge.messages import Severity
 from bridge.regression.spec import FitBy, ModelSpec, NumberTerm, Shape
+from bridge.sheets.book import ModelSheet
 from bridge.workbook.tables import DataColumn, Table
 
 MONTHS = ("Jan", "Feb", "Mar", "Apr", "May", "Jun", "Jul", "Aug", "Sep", "Oct", "Nov", "Dec")
@@ -17,6 +19,11 @@ CAUTIONS = (
     "the model has nothing to go by. Such estimates are marked.",
     "Where safety, lending or the law on valuations is at stake, local codes and licensed practice decide, "
     "not this page.",
+)
+
+SEARCH_WARNING = (
+    "The terms were chosen by a search over these same rows: p values and intervals no longer hold as stated, they "
+    "look better than they are. Trust the typical miss, for which the search was done anew within each fold."
 )
 
 # Headers that are a unit by themselves ("crew hours"); anything else needs (…) or […].
@@ -166,7 +173,14 @@ def form(spec: ModelSpec) -> str:
     return ", ".join([plain, *extras])
 
 
+def refusal(model: ModelSheet) -> str:
+    """Why a model was not fitted, in the words of its problems."""
+    said = [problem.text for problem in model.problems if problem.severity is Severity.REFUSAL]
+    return " ".join(said or [problem.text for problem in model.problems] or ["It was not fitted."])
+
+
 def _mixed(shapes: set[Shape]) -> str:
-    if not shapes:
-        return "straight"
-    return _FORMS[next(iter(shapes))] if len(shapes) == 1 else "mixed"
+    return listing(
+        [name for shape, name in _FORMS.items() if shape in shapes and shape is not Shape.AS_IS]
+        + (["straight"] if Shape.AS_IS in shapes or not shapes else [])
+    )
