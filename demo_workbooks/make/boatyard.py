@@ -24,7 +24,7 @@ _BOATYARD_WORDS = (
     "Refits holds 128 past jobs (two without hours, one without coats: they are left out and named). Summary is the "
     "yard's own page, with a chart, a drawing and formulas. Neither is touched by a fit.",
     "fit request asks for three models: A, straight in length; B, hours and length as logarithms; C, as B, with "
-    "a slope of its own for each hull material.",
+    "the crew and a slope of its own for each hull material.",
     "Try it:",
     "Change a number of hours in Refits, or an entry in fit request, and save while the folder is watched.",
     "The truth behind the rows:",
@@ -45,14 +45,14 @@ def boatyard() -> dict[str, bytes]:
         Column("crew", [job.crew for job in jobs], 9, "0", "Hands on the job on an ordinary day."),
         Column("month", [job.month for job in jobs], 12, "yyyy-mm", "The month the boat was hauled out."),
     )
-    roles = {"job": "label", "hull": "category", "coats": "predictor", "crew": "predictor", "month": "order"}
+    roles = {"job": "label", "hull": "category", "coats": "predictor", "month": "order"}
     logs = roles | {"hours": "log response", "length (m)": "log predictor"}
     ask = Ask(
         "Refits",
         {
             "A": roles | {"hours": "response", "length (m)": "predictor"},
             "B": logs,
-            "C": logs | {"hull": "category base oak"},
+            "C": logs | {"hull": "category base oak", "crew": "predictor"},
         },
         crossed=[("length (m)", "hull", ("C",))],
         settings={"standard errors": {"A": "uneven spread"}},
