@@ -143,6 +143,96 @@ CATALOGUE: dict[str, tuple[Severity, str]] = {
         'The sheet "{sheet}" cannot be laid out anew because it holds {what} of yours, which would be lost. '
         "Move it to a sheet of your own, or delete it, and save again.",
     ),
+    "user-objects-would-go": (
+        _R,
+        'The sheet "{sheet}" was not taken out because it holds {what} of yours, which would go with it. '
+        "Move it to a sheet of your own, or delete it, and try again.",
+    ),
+    "no-sheet-left": (
+        _R,
+        "Without the fit sheets no visible sheet would be left, which a workbook must have. "
+        "Add or show a sheet of your own and try again.",
+    ),
+    # files: reading and writing back
+    "file-missing": (_R, "'{name}' is not there. Check the name and the folder."),
+    "file-not-plain": (_R, "'{name}' is not a plain file, so it is left alone."),
+    "file-unreadable": (_R, "'{name}' cannot be read ({reason}). Check that you may open it."),
+    "file-too-large": (
+        _R,
+        "'{name}' has {size} MB; more than {limit} MB are not read. Take sheets or pictures that are not needed out.",
+    ),
+    "file-unpacks-too-large": (
+        _R,
+        "'{name}' unpacks to more than {limit} GB, which no ordinary workbook does, so it is left alone.",
+    ),
+    "file-being-saved": (_R, "'{name}' is being saved at this moment. It is looked at again when that is done."),
+    "file-not-whole": (
+        _R,
+        "'{name}' is not whole ({detail}): it is still being saved or copied, or it is damaged. "
+        "Save it once more from your spreadsheet program.",
+    ),
+    "file-hard-linked": (
+        _R,
+        "'{name}' is one file under {count} names (hard links). Putting results in would part them, "
+        "so it is left alone. Copy the workbook to a file of its own.",
+    ),
+    "file-read-only": (_R, "'{name}' is marked read-only, and that is respected. Allow writing to it and save again."),
+    "folder-read-only": (
+        _R,
+        "Nothing can be written into the folder '{folder}', so '{name}' keeps its old version. "
+        "Ask for the right to write there, or move the workbook.",
+    ),
+    "folder-sticky": (
+        _R,
+        "In the folder '{folder}' only a file's owner may replace it, and '{name}' belongs to somebody else. "
+        "Let its owner run the bridge, or move the workbook.",
+    ),
+    "no-space": (
+        _R,
+        "There is no space left in '{folder}' for the new version of '{name}'; the old one is untouched. "
+        "Make room and save again.",
+    ),
+    "not-permitted": (
+        _R,
+        "The system does not permit '{name}' in '{folder}' to be replaced; it is untouched. "
+        "Check the rights on the file and the folder.",
+    ),
+    "name-too-long": (
+        _R,
+        "The path of '{name}' is so long that no working file fits next to it in '{folder}'. Use shorter folder names.",
+    ),
+    "mounted-alone": (
+        _R,
+        "'{name}' is mounted as a single file and cannot be replaced. Mount its folder instead, or move the workbook.",
+    ),
+    "write-failed": (_R, "The new version of '{name}' could not be written ({reason}). The old one is untouched."),
+    "claimed-elsewhere": (
+        _R,
+        "Another bridge ({user} on {host}) is at work on '{name}' and will put the results in.",
+    ),
+    "written-while-open": (
+        _N,
+        "The workbook is open in {program}: File > Reload shows the results. If it asks at the next save whether "
+        "to save anyway, your entries are kept and the results are put in again.",
+    ),
+    "beside-while-open": (
+        _N,
+        "The workbook is open in {program} and cannot be replaced: the results are in '{copy}' for now, "
+        "and go into the workbook when it is closed.",
+    ),
+    "waiting-while-open": (_N, "The workbook is open in {program}: the results go in when it is closed."),
+    "owner-not-kept": (_N, "The file now belongs to you, because the system does not let it be given back."),
+    # watch: what becomes of a workbook's turn
+    "job-too-long": (
+        _W,
+        "The last fit took longer than {limit} and was ended. Ask for fewer models, candidates or folds, "
+        "or allow more time.",
+    ),
+    "job-too-large": (
+        _W,
+        "The last fit needed more than {limit} of memory and was ended. Ask for fewer models or terms.",
+    ),
+    "job-broke": (_W, "The last fit ended unexpectedly ({kind}). Save again to repeat it."),
 }
 
 

@@ -70,7 +70,8 @@ class TableEntry:
 
 @dataclass(frozen=True)
 class Package:
-    """An opened workbook. `parts` holds the members by part key; `state` the texts that the last graft stored."""
+    """An opened workbook. `parts` holds the members by part key; `state` the texts that the last
+    graft stored, `active_tab` the position of the sheet it opens at."""
 
     data: bytes = field(repr=False)
     limits: Limits
@@ -83,6 +84,7 @@ class Package:
     sheets: tuple[SheetEntry, ...]
     defined_names: tuple[Name, ...] = field(repr=False)
     state: Mapping[str, str]
+    active_tab: int
 
     @classmethod
     def open(cls, data: bytes, limits: Limits = Limits()) -> Package:  # noqa: B008 (frozen)
@@ -102,12 +104,20 @@ class Package:
         _refuse_workbook(workbook)
         _check_shared_parts(relationships, parts, limits)
         names = read_names(workbook)
-        sheets = _sheets(workbook, relationships, names, reader)
-        state = mark.texts(names, mark.STATE)
-        strict = namespace(workbook) == STRICT_MAIN
         return cls(
-            data, limits, archive, parts, types, workbook_part, relationships, strict, sheets, names, state
-        )  # fmt: skip
+            data=data,
+            limits=limits,
+            archive=archive,
+            parts=parts,
+            types=types,
+            workbook_part=workbook_part,
+            workbook_relationships=relationships,
+            strict=namespace(workbook) == STRICT_MAIN,
+            sheets=_sheets(workbook, relationships, names, reader),
+            defined_names=names,
+            state=mark.texts(names, mark.STATE),
+            active_tab=_active_tab(workbook),
+        )
 
     def entry(self, tab: str) -> SheetEntry | None:
         """The sheet whose tab says `tab` (case aside), or None."""
@@ -218,6 +228,13 @@ def _refuse_workbook(workbook: etree._Element) -> None:
     protection = child(workbook, "workbookProtection")
     if protection is not None and protection.get("lockStructure") in _TRUE:
         raise FileRefused(say("locked-structure"))
+
+
+def _active_tab(workbook: etree._Element) -> int:
+    """The position of the sheet the workbook opens at."""
+    views = child(workbook, "bookViews")
+    view = None if views is None else child(views, "workbookView")
+    return 0 if view is None else _count(view.get("activeTab"), 0)
 
 
 def _check_shared_parts(relationships: Iterable[Relationship], parts: Mapping[str, Member], limits: Limits) -> None:

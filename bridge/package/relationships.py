@@ -86,6 +86,11 @@ def _relationship(element: etree._Element, source: str) -> Relationship:
     )
 
 
+def root_of(data: bytes | None, limits: Limits) -> etree._Element:
+    """The root element of a relationships part, or of a new one without any."""
+    return etree.fromstring(written(())) if data is None else parse(data, "the workbook's relationships", limits)
+
+
 def fresh_id(taken: Iterable[str]) -> str:
     """The first free `rIdN`."""
     used = set(taken)
