@@ -1,0 +1,44 @@
+"""The smallest files that count as whole zips: a number the user saved, and perhaps a result made from it."""
+
+from __future__ import annotations
+
+import io
+import zipfile
+from pathlib import Path
+
+WORKBOOK_XML = '<workbook><sheets><sheet name="Data"/><sheet name="fit request"/></sheets></workbook>'
+
+
+def saved(number: int, padding: int = 0) -> bytes:
+    """What a user's save number `number` writes; `padding` bytes that do not compress make it larger."""
+    made = io.BytesIO()
+    with zipfile.ZipFile(made, "w") as book:
+        book.writestr("xl/workbook.xml", WORKBOOK_XML)
+        book.writestr("number.txt", str(number))
+        if padding:
+            book.writestr("xl/media/picture.bin", number.to_bytes(8, "little") * (padding // 8))
+    return made.getvalue()
+
+
+def with_result(data: bytes) -> bytes:
+    """The same with a result made from it."""
+    made = io.BytesIO(data)
+    with zipfile.ZipFile(made, "a") as book:
+        book.writestr("result.txt", book.read("number.txt"))
+    return made.getvalue()
+
+
+def contents(data: bytes) -> tuple[int, int | None]:
+    """The user's number and the number the result was made from. Raises zipfile.BadZipFile."""
+    with zipfile.ZipFile(io.BytesIO(data)) as book:
+        number = int(book.read("number.txt"))
+        made_from = int(book.read("result.txt")) if "result.txt" in book.namelist() else None
+    return number, made_from
+
+
+def look(path: Path) -> tuple[int, int | None] | None:
+    """`contents` of a file; None while it is absent or not whole."""
+    try:
+        return contents(path.read_bytes())
+    except (OSError, zipfile.BadZipFile, KeyError, ValueError, EOFError):
+        return None
