@@ -9,7 +9,7 @@ import numpy as np
 
 from bridge.page.cells import reference
 from bridge.page.sheet import Block, BlockColumn
-from bridge.sheets import style
+from bridge.sheets import axes, measure, style
 from bridge.sheets.paper import Paper
 
 FIRST_COLUMN = 10
@@ -54,7 +54,8 @@ def put_down(paper: Paper, columns: Sequence[tuple[str, str, tuple[float | None,
     owner_before = None
     for at, (owner, title, values) in enumerate(columns):
         column = FIRST_COLUMN + at
-        paper.widths[column] = WIDTH
+        title = axes.shortened(title, 40)
+        paper.widths[column] = max(WIDTH, measure.units(title, _SMALL.size))
         if owner != owner_before:
             paper.put(column, owner, replace(_SMALL, align="left", bold=True), HEADER_ROW - 1)
         owner_before = owner

@@ -151,9 +151,9 @@ def _pictures(cases: _Cases) -> tuple[Picture, ...]:
     numbers = [term.column for term in spec.terms if isinstance(term, NumberTerm)]
     made: list[Picture | None] = [_observed(cases), _fitted(cases), _normal(cases), _leverage(cases)]
     made.append(_order(cases, spec.order) if spec.order else None)
-    made.append(_coefficients(cases))
     made.append(_line(cases) if len(spec.terms) == len(numbers) == 1 else None)
     made.extend(_against(cases, column) for column in numbers)
+    made.append(_coefficients(cases))  # last: it is the one that grows with the number of terms
     return tuple(picture for picture in made if picture is not None)
 
 

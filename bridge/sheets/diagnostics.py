@@ -158,16 +158,16 @@ def most_influential(result: ModelResult) -> list[int]:
     """Positions of the rows with the largest Cook's distance: the marked ones, else the first three; eight at most."""
     cook = np.nan_to_num(result.influence.cooks_distance, nan=-1.0, posinf=-1.0)
     order = np.argsort(-cook, kind="stable").tolist()
-    marked = remarks.marks(result)
-    odd = [at for at in order if marked.any[at]]
+    marked = remarks.marks(result).any
+    odd = [at for at in order if marked[at]]
     least = [at for at in order[:3] if at not in odd]
     return sorted(odd[:_MOST_ROWS] + least[: max(0, 3 - len(odd))], key=lambda at: -cook[at])
 
 
 def _collinearity(paper: Paper, model: ModelSheet, result: ModelResult) -> None:
     found = result.collinearity
-    if not found.terms and not result.design.aliased:
-        return
+    if len(found.terms) < 2 and not result.design.aliased and not _raised(result):
+        return  # a single plain term has nothing to be told apart from
     _header(paper, ("can the terms be told apart", "", "columns", "GVIF", "per column"), (2, 3, 4), "in words", 5)
     for term in found.terms:
         text, _ = readings.vif(term)
@@ -191,8 +191,7 @@ def _collinearity(paper: Paper, model: ModelSheet, result: ModelResult) -> None:
 
 def _indexes(paper: Paper, model: ModelSheet, result: ModelResult) -> None:
     found = result.collinearity
-    raised = [at for at, index in enumerate(found.condition_indexes) if index > readings.INDEX_SIGN]
-    raised.sort(key=lambda at: -float(found.condition_indexes[at]))
+    raised = _raised(result)
     looks = (_TEXT, _TEXT, _number("0.0"), _QUIET, _QUIET)
     if not raised:
         largest = float(found.condition_indexes[-1]) if len(found.condition_indexes) else math.nan
@@ -210,6 +209,12 @@ def _indexes(paper: Paper, model: ModelSheet, result: ModelResult) -> None:
         shares = _shares(model, result, at)
         said = words.sentence(f"{text}; variance shares: {shares}" if shares else text)
         _line(paper, ("condition index", None, index, None, None), looks, said, 5, wide=0)
+
+
+def _raised(result: ModelResult) -> list[int]:
+    """Condition indexes that are not harmless, the largest first."""
+    indexes = result.collinearity.condition_indexes
+    return sorted((at for at in range(len(indexes)) if indexes[at] > readings.INDEX_SIGN), key=lambda at: -indexes[at])
 
 
 def _shares(model: ModelSheet, result: ModelResult, at: int) -> str:

@@ -15,7 +15,7 @@ UNIT_PIXELS = 7.0
 PADDING_PIXELS = 5.0
 _LINE_POINTS = 1.28  # of the type size
 _ROOM = 1.04  # programs differ a little in how they set a line that may not wrap
-_OTHER = 556
+_OTHER = 590
 
 _WIDTHS: dict[str, int] = {}
 for _width, _characters in (
@@ -80,7 +80,7 @@ def _width_of(character: str) -> int:
     base = unicodedata.normalize("NFD", character)[0]
     if base in _WIDTHS:
         return _WIDTHS[base]
-    return 722 if character.isupper() else _OTHER
+    return 760 if character.isupper() else _OTHER
 
 
 def _wrapped(text: str, room: float, size: float, bold: bool) -> int:

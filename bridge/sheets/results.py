@@ -15,7 +15,7 @@ from bridge.sheets.book import Book, ModelSheet
 from bridge.sheets.paper import ROW_POINTS, Paper
 
 MODELS_A_PAGE = 3
-_LABEL, _MODEL = 31.0, 19.5
+_LABEL, _MODEL = 33.0, 23.0
 _LAST = MODELS_A_PAGE  # the label's column, then one a model
 _GAP, _CHARTS = MODELS_A_PAGE + 1, MODELS_A_PAGE + 2
 _CHART_WIDTH, _CHART_HEIGHT = 440, 270
@@ -66,10 +66,10 @@ def title(book: Book) -> str:
     if len(names) != 1:
         return "Results" if fitted else "No model could be fitted"
     counts = {result.fit.n for _, result in fitted}
-    name = names.pop()
+    name = words.capital(names.pop())
     rows = words.plural(max(counts), "row")
     span = rows if len(counts) == 1 else f"{words.number(min(counts))} to {rows}"
-    return f"{name[:1].upper()}{name[1:]}, from {span}"
+    return f"{name}, from {span}"
 
 
 # --- one group of models ------------------------------------------------------------------------
@@ -237,8 +237,9 @@ def _beside(paper: Paper, book: Book, row: int) -> int:
             paper.charts.append(replace(chart, row=row, column=_CHARTS, width=_CHART_WIDTH, height=_CHART_HEIGHT))
             row = _row_below(paper, row, _CHART_HEIGHT * 72 / 96 + 8)
     paper.put(_CHARTS, "Before you rely on it", style.HEADING, row)
+    paper.heights[row] = max(paper.heights.get(row, ROW_POINTS), style.HEADING.size * 1.6)
     live = LIVE.format(estimates=book.title("fit estimates"))
-    end = paper.beside("\n".join((*words.CAUTIONS, live)), _CHARTS, last, row + 1)
+    end = paper.beside("\n\n".join((*words.CAUTIONS, live)), _CHARTS, last, row + 1)
     paper.row = max(paper.row, end)
     return last
 

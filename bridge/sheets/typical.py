@@ -30,7 +30,7 @@ def case(model: ModelSheet, result: ModelResult) -> str | None:
     estimate = float(made.estimate[0])
     if not math.isfinite(estimate):
         return None
-    unit = words.unit_in(model.table, result.spec.response) or words.name_in(model.table, result.spec.response)
+    unit = words.unit_in(model.table, result.spec.response)
     spread = figures.unit_sd(result)
     about = figures.placed_number(estimate, spread)
     ends = [figures.placed_number(float(end[0]), spread) for end in (made.case_low, made.case_high)]

@@ -208,7 +208,8 @@ def reach(models: Sequence[Fitted]) -> list[str]:
     for model, result in models:
         for one in result.ranges:
             unit = words.unit_in(model.table, one.column)
-            ends = f"{figures.plain_number(one.low)} to {words.with_unit(figures.plain_number(one.high), unit)}"
+            low, high = (figures.plain_number(figures.rounded(end, 5)) for end in (one.low, one.high))
+            ends = f"{low} to {words.with_unit(high, unit)}"
             spans.setdefault(words.name_in(model.table, one.column), ends)
     if not spans:
         return []

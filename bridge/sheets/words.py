@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+import unicodedata
 from collections.abc import Sequence
 from datetime import date, datetime, timedelta
 
@@ -63,6 +64,12 @@ def sentence(text: str) -> str:
     return text if text.endswith((".", "!", "?")) else text + "."
 
 
+def capital(name: str) -> str:
+    """A header as a title begins: a plain lower-case word gets a capital, `y`, `pH` and codes stay as they are."""
+    first = name.split(" ", 1)[0]
+    return name[:1].upper() + name[1:] if len(first) > 2 and first.isalpha() and first.islower() else name
+
+
 # --- dates -------------------------------------------------------------------------------------
 
 
@@ -112,7 +119,14 @@ def column_of(table: Table | None, name: str) -> DataColumn | None:
 def name_in(table: Table | None, name: str) -> str:
     """How sentences call a column: its header without the unit."""
     column = column_of(table, name)
-    return bare_name(column) if column is not None else name
+    return isolated(bare_name(column) if column is not None else name)
+
+
+def isolated(text: str) -> str:
+    """A text kept together where it is written from right to left, so that the sentence around it stays in order."""
+    if any(unicodedata.bidirectional(character) in ("R", "AL") for character in text):
+        return f"\u2068{text}\u2069"
+    return text
 
 
 def unit_in(table: Table | None, name: str) -> str:
@@ -133,7 +147,7 @@ def with_unit(number: str, unit: str) -> str:
     """`19 hours`, `22 m`, `17%`; the number alone without a unit."""
     if not unit:
         return number
-    return f"{number}{unit}" if unit in ("%", "°") else f"{number} {unit}"
+    return f"{number}{unit}" if unit in ("%", "°") else isolated(f"{number} {unit}")
 
 
 def axis_title(table: Table | None, name: str, shape: Shape = Shape.AS_IS) -> str:
