@@ -97,7 +97,9 @@ def _watch_options(command: argparse.ArgumentParser) -> None:
         help="a workbook that a program holds open: write anyway, wait until it is closed, "
         "or put the results in a copy beside it; auto picks what is safe (default: %(default)s)",
     )
-    command.add_argument("--workers", type=int, default=2, metavar="N", help="how many at a time (default: %(default)s)")
+    command.add_argument(
+        "--workers", type=int, default=2, metavar="N", help="how many at a time (default: %(default)s)"
+    )
 
 
 def _demo(options: argparse.Namespace) -> int:

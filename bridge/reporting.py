@@ -84,13 +84,17 @@ def _planned(model: ModelSheet) -> str:
     spec = model.request.spec
     if spec is None:
         return "not understood yet"
-    rows = f"; {len(model.taken.used)} of {len(model.taken.used) + len(model.taken.left_out)} rows" if model.taken else ""
+    rows = (
+        f"; {len(model.taken.used)} of {len(model.taken.used) + len(model.taken.left_out)} rows" if model.taken else ""
+    )
     return f"{_described(spec)}{rows}; {spec.errors} standard errors; {spec.level:.10g} intervals; {spec.fit_by}"
 
 
 def _described(spec: ModelSpec) -> str:
     response = spec.response if spec.response_shape is Shape.AS_IS else f"{spec.response_shape} {spec.response}"
-    terms = [_term(term) for term in spec.terms] + [f"{cross.first} crossed with {cross.second}" for cross in spec.crossed]
+    terms = [_term(term) for term in spec.terms] + [
+        f"{cross.first} crossed with {cross.second}" for cross in spec.crossed
+    ]
     return f"{response} from {', '.join(terms) if terms else 'its mean'}"
 
 
@@ -153,5 +157,3 @@ def _figures(result: ModelResult) -> dict[str, object]:
 
 def _number(value: float) -> float | None:
     return float(value) if math.isfinite(value) else None
-
-

@@ -7,10 +7,13 @@ from collections.abc import Mapping
 from bridge.page.sheet import DefinedName, Sheet
 from bridge.sheets import anova, coefficients, diagnostics, estimates, history, names, request, results, rows
 from bridge.sheets.book import OUR_SHEETS, Book
-from bridge.workbook.contents import RawSheet
+from bridge.workbook.contents import HistoryLine, NewCase, RawSheet
 from bridge.workbook.request import Request
 
 _RESULTS = (results, coefficients, anova, diagnostics, rows, estimates, history)
+
+
+WITH_ENTRIES = ("fit request", "fit estimates")
 
 
 def expected(asked: Request) -> frozenset[str]:
@@ -30,7 +33,18 @@ def defined_names(book: Book) -> tuple[DefinedName, ...]:
     return names.defined_names(book)
 
 
-def typed(own: Mapping[str, RawSheet]) -> tuple[object, ...]:
-    """What the user typed on our result sheets, as values that a digest can read."""
+def cases(own: Mapping[str, RawSheet]) -> tuple[NewCase, ...]:
+    """The new cases that the user typed."""
     raw = own.get("fit estimates")
     return estimates.read_cases(raw) if raw is not None else ()
+
+
+def history_lines(own: Mapping[str, RawSheet]) -> tuple[HistoryLine, ...]:
+    """The fits so far."""
+    raw = own.get("fit history")
+    return history.read(raw) if raw is not None else ()
+
+
+def typed(own: Mapping[str, RawSheet]) -> tuple[object, ...]:
+    """What the user typed on our result sheets, as values that a digest can read."""
+    return cases(own)
