@@ -164,6 +164,8 @@ def _table(paper: Paper, book: Book, group: Sequence[ModelSheet]) -> None:
     text = replace(style.ROW, wrap=True, align="right")
     forms = [words.form(model.result.spec) if model.result is not None else "not fitted" for model in group]
     paper.line(("form", *forms), (style.ROW, *(text for _ in group)))
+    if all(model.result is None for model in group):
+        return
     least = _least_misses(book)
     for figure in _FIGURES:
         paper.put(0, figure.label, style.ROW)
