@@ -10,7 +10,7 @@ from datetime import date
 from xlsxwriter.workbook import Workbook
 from xlsxwriter.worksheet import Worksheet
 
-from bridge.sheets import style
+from bridge.sheets import measure, style
 from demo_workbooks.make.workshop import Column, look, plain_page
 
 
@@ -57,7 +57,7 @@ _FIRST_MODEL = 4
 def request_sheet(book: Workbook, ask: Ask, columns: Sequence[Column]) -> Worksheet:
     """`fit request` filled in: four blocks, a column per model, facts about the data beside the entries."""
     page = plain_page(book, "fit request", style.TAB_FILL_IN)
-    page.set_column(0, 0, 21)
+    page.set_column(0, 0, max(21, measure.widest((column.header for column in columns), bold=True) + 1))
     page.set_column(1, 2, 12)
     page.set_column(3, 3, 25)
     page.set_column(_FIRST_MODEL, _FIRST_MODEL + len(ask.models) - 1, 27)
@@ -142,6 +142,8 @@ def facts(column: Column) -> tuple[str, str, str]:
         return "date", filled, f"{min(days)} to {max(days)}"
     if any(isinstance(cell, str) for cell in there):
         levels = [str(level) for level, _ in Counter(there).most_common()]
-        return "text", filled, ", ".join(levels) if len(levels) <= 4 else f"{len(levels)} different"
+        if len(levels) <= 3:
+            return "text", filled, ", ".join(levels)
+        return "text", filled, f"{len(levels)} {'different' if len(levels) == len(there) else 'levels'}"
     numbers = [float(cell) for cell in there if isinstance(cell, int | float)]
-    return "number", filled, f"{min(numbers):.4g} to {max(numbers):.4g}"
+    return "number", filled, f"{min(numbers):.6g} to {max(numbers):.6g}"
