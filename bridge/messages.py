@@ -48,6 +48,18 @@ _R, _W, _N = Severity.REFUSAL, Severity.WARNING, Severity.NOTE
 
 CATALOGUE: dict[str, tuple[Severity, str]] = {
     # key: (severity, wording with {fields}); grouped by the room that says it.
+    # the story
+    "watcher-note": (_W, "{note}"),
+    "saved-again-and-again": (_R, "{name} is being saved again and again. Try once more when it is quiet."),
+    "fewer-rows-than-terms": (
+        _R,
+        "The model has {count} coefficients but only {rows} rows to find them from. Give it more rows or fewer terms.",
+    ),
+    "too-many-terms": (
+        _R,
+        "The model is wider than can be fitted here: {reason}. Use fewer predictors, levels or crossed columns.",
+    ),
+    "cannot-be-fitted": (_R, "The model cannot be fitted to these rows: {reason}. Look at the columns it uses."),
     # package: files that are left alone
     "empty-file": (_R, "The file is empty. Save the workbook again from your spreadsheet program."),
     "not-a-workbook": (
