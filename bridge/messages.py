@@ -245,6 +245,244 @@ CATALOGUE: dict[str, tuple[Severity, str]] = {
         "The last fit needed more than {limit} of memory and was ended. Ask for fewer models or terms.",
     ),
     "job-broke": (_W, "The last fit ended unexpectedly ({kind}). Save again to repeat it."),
+    # workbook: reading cells
+    "workbook-unreadable": (
+        _R,
+        "The workbook's cells cannot be read. Open it in your spreadsheet program and save it again as .xlsx.",
+    ),
+    "sheet-unreadable": (
+        _R,
+        'The sheet "{sheet}" cannot be read. Open the workbook in your spreadsheet program and save it again.',
+    ),
+    "sheet-reaches-too-far": (
+        _R,
+        'The sheet "{sheet}" reaches out to {cell}, with next to nothing in between. '
+        "Delete what stands far away from the data and save again.",
+    ),
+    # workbook: the request's data sheet and models
+    "no-data-sheet": (_R, "No data sheet is named yet. Type the name of the sheet with your cases in {at}."),
+    "data-sheet-unknown": (_R, 'There is no sheet "{sheet}", which {at} names.{hint}'),
+    "data-sheet-without-table": (
+        _R,
+        'No table was found on the sheet "{sheet}" ({at}). '
+        "Give it one row of column names with the cases in the rows below.",
+    ),
+    "model-name-bad": (
+        _R,
+        '"{name}" in {at} cannot be a model\'s name. Use letters, digits and _, at most {most} of them.',
+    ),
+    "model-name-twice": (_R, 'Two models are called "{name}" ({other} and {at}). Give this one a name of its own.'),
+    "model-names-clash": (
+        _R,
+        'The models "{name}" ({at}) and "{other}" would both own the name {formula_name} in formulas. '
+        "Give this one another name.",
+    ),
+    "model-without-name": (_W, "Column {letters} has entries but no model name. Type one in {at}."),
+    # workbook: entries beside the data columns
+    "entry-without-value": (
+        _R,
+        "{at} holds a formula whose result is not stored. "
+        "Let your spreadsheet program calculate it and save, or type the entry.",
+    ),
+    "entry-without-column": (
+        _R,
+        "{at} holds an entry, but no column is named in its row. Type its name in {label_cell}.",
+    ),
+    "column-unknown": (_R, 'There is no column "{column}" on {sheets} (asked for in {at}).{hint}'),
+    "column-renamed": (
+        _R,
+        'There is no column "{column}" any more; "{new}" stands in its place. If it is the same, type "{new}" in '
+        "{label_cell}. If not, clear the entries of that row.",
+    ),
+    "column-empty": (_R, '"{column}" is used in {at}, but that column is empty on "{sheet}".'),
+    "entry-not-words": (
+        _R,
+        '{at} holds {typed}, where the role of a column is expected, for example "predictor" or "log response".',
+    ),
+    "entry-unknown-word": (_R, '"{typed}" in {at} is not understood because of "{word}".{hint}'),
+    "entry-without-role": (
+        _R,
+        '"{typed}" in {at} does not say what the column is. Add a role, for example "predictor".',
+    ),
+    "entry-two-roles": (
+        _R,
+        '"{typed}" in {at} names two roles, {first} and {second}. A column has one role in a model.',
+    ),
+    "shape-needs-number-role": (
+        _R,
+        '"{typed}" in {at}: a {role} cannot be given a shape. Shapes go with predictor, candidate and response.',
+    ),
+    "response-shape": (_R, '"{typed}" in {at}: a response is taken as it is, or as "log response" or "root response".'),
+    "two-shapes": (_R, '"{typed}" in {at} asks for more than one shape. Choose one of them.'),
+    "base-needs-category": (_R, '"{typed}" in {at}: a base level goes with a category, as in "category base oak".'),
+    "base-without-level": (_R, '"{typed}" in {at} does not say which level is the base, as in "category base oak".'),
+    "base-unknown": (_R, '"{column}" has no level "{base}", which {at} asks for as the base.{hint}'),
+    "bend-without-place": (_R, '"{typed}" in {at} does not say where the bend is, as in "predictor bend at 15".'),
+    "bend-unclear": (
+        _R,
+        '"{typed}" in {at}: {number} can be read in two ways. Write it without a thousands separator.',
+    ),
+    "power-out-of-range": (
+        _R,
+        '"{typed}" in {at}: write "to power" and a whole number from 2 to {most}, as in "predictor to power 3".',
+    ),
+    "no-response": (
+        _R,
+        'No column is the response. Write "response" under {at} beside the column that is to be estimated.',
+    ),
+    "two-responses": (_R, '"{first}" ({other}) and "{second}" ({at}) are both the response. Keep one.'),
+    "response-also-predictor": (
+        _R,
+        '"{column}" is the response and a predictor at once ({other} and {at}). Clear one of the two.',
+    ),
+    "column-twice": (_R, '"{column}" stands in two rows, with entries in {other} and {at}. Clear one of them.'),
+    "role-twice": (_R, '"{first}" ({other}) and "{second}" ({at}) are both the {role}. Keep one.'),
+    "two-sheets": (
+        _R,
+        'All columns of a model come from one sheet, but "{column}" ({at}) is on "{sheet}" and "{other}" on "{first}".',
+    ),
+    "text-as-number": (_R, '"{column}" holds texts, so it cannot be {role} ({at}).{instead}'),
+    "date-as-number": (_N, '"{column}" holds dates; as a number it counts in days.'),
+    "yes-no-as-number": (_N, '"{column}" holds TRUE and FALSE; as a number TRUE is 1 and FALSE is 0.'),
+    "no-predictor": (_W, "The model has no predictor yet, so it only gives the mean. Write one beside another column."),
+    "nothing-to-fit": (_R, "Without a predictor and without an intercept there is nothing to fit. Add a predictor."),
+    # workbook: crossed terms
+    "crossed-not-yes": (_R, '"{typed}" in {at} is not understood: write "yes" where a model takes the product.'),
+    "crossed-incomplete": (_R, "A crossed term needs two columns; {at} names none."),
+    "crossed-not-a-term": (
+        _R,
+        '"{column}" is crossed ({at}) but is neither predictor nor category of this model. '
+        "Give it a role above, or clear the yes.",
+    ),
+    "crossed-with-itself": (_R, '"{column}" is crossed with itself ({at}). For its square write "squared predictor".'),
+    # workbook: settings and row filters
+    "setting-unknown": (_R, '"{typed}" in {at} is not one of the choices for {setting}: {choices}.{hint}'),
+    "setting-row-unknown": (_W, 'The row "{label}" is not a setting, so {at} has no effect. Did you mean "{near}"?'),
+    "setting-not-whole": (_R, '"{typed}" in {at}: {setting} takes a whole number, {least} or more.'),
+    "level-out-of-range": (
+        _R,
+        '"{typed}" in {at} is not an interval level. Write a percentage from 50% to below 100%, such as 95%.',
+    ),
+    "filter-without-column": (_R, '{at} says how to choose rows, but "{where}" names no column.'),
+    "filter-without-value": (_R, 'The rows where "{column}" {comparison} … ({at}): the value is missing below.'),
+    "filter-other-sheet": (_R, '"{column}" ({at}) is not a column of "{sheet}", where the model\'s columns are.'),
+    "filter-order-on-text": (
+        _R,
+        '"{column}" holds no numbers or dates, so "{comparison}" ({at}) cannot be applied. Use equals or is not.',
+    ),
+    "filter-between": (_R, '"{typed}" in {at}: between takes two values, as in "5 and 12".'),
+    "filter-value": (_R, '"{typed}" in {at} cannot be compared with "{column}": {kind} is needed.'),
+    "filter-leaves-nothing": (_R, 'No row is left: none has "{column}" {comparison} {value} ({at}).{hint}'),
+    "filter-value-absent": (
+        _W,
+        'No row has "{column}" equal to "{value}", so leaving those out changes nothing.{hint}',
+    ),
+    "grouped-without-group": (
+        _R,
+        'Grouped standard errors ({at}) need to know the groups. Write "group" beside the column that tells them.',
+    ),
+    "serial-without-order": (
+        _N,
+        "No column is the order, so serial standard errors take the rows in the order of the sheet.",
+    ),
+    "lags-without-serial": (_N, "Lags have no effect, because the standard errors are not serial ({at})."),
+    "search-without-candidates": (
+        _W,
+        'There is nothing to search ({at}): write "candidate" beside the columns that may be dropped.',
+    ),
+    "candidates-without-search": (_N, "All candidates stay in the model, because no search is chosen below."),
+    "too-many-candidates": (_R, "{count} candidates are too many for an exact search ({at}); the most is {most}."),
+    "back-on-without-shape": (_N, "The response is not transformed, so {at} has no effect."),
+    # workbook: the rows and values a model takes
+    "formula-without-value": (
+        _R,
+        "{column}: the formula in {cells} has no stored result. "
+        "Open the workbook in your spreadsheet program, let it calculate, and save.",
+    ),
+    "error-cells": (
+        _W,
+        "{column} holds an error in {cells}; {rows} left out for it. Mend the formula or clear the cell.",
+    ),
+    "text-in-number-column": (
+        _R,
+        '"{column}" is {role}, but {cell} holds the text "{text}"{more}. '
+        "Give it {what}, empty the cell, or clear the entry in {at}.",
+    ),
+    "number-stored-as-text": (
+        _R,
+        '"{column}" is {role}, but {cell} holds "{text}" as a text, not as a number{more}. Type it again as a number.',
+    ),
+    "number-among-texts": (
+        _W,
+        "{column}: cell {cell} holds a number among texts; it was read as the level '{level}'{more}.",
+    ),
+    "text-among-numbers": (
+        _W,
+        "{column}: cell {cell} holds a text among numbers; it was read as the level '{level}'{more}.",
+    ),
+    "kind-among-others": (
+        _W,
+        "{column}: cell {cell} holds {what} among {others}; it was read as {value}{more}.",
+    ),
+    "rows-left-out": (_N, "{rows} left out: {reasons}."),
+    "rows-filtered": (_N, "{rows} left out by the filter: only those where {condition} are used."),
+    "hidden-rows-used": (
+        _N,
+        '{rows} among those used are hidden on "{sheet}". They count all the same; "use rows where" leaves rows out.',
+    ),
+    "no-rows": (_R, 'No row of "{sheet}" is complete: each has a blank or an error in one of the columns used.'),
+    "too-few-rows": (_R, "{rows} cannot carry {count} coefficients. Use fewer terms, or more cases."),
+    "constant-response": (_R, '"{column}" is {value} in every row used, so there is nothing to explain.'),
+    "one-level": (_R, '"{column}" is "{level}" in every row used; a category needs at least two levels.'),
+    "one-group": (_R, 'All rows used belong to the group "{level}" of "{column}"; grouped errors need more.'),
+    "base-not-in-rows": (_R, '"{column}" is never "{base}" in the rows used, so that cannot be the base.{hint}'),
+    "log-of-nothing": (
+        _R,
+        '"{column}" has {value} in {cell}{more}, and only numbers above zero have a log. '
+        "Correct the cell or change the entry in {at}.",
+    ),
+    "root-of-negative": (
+        _R,
+        '"{column}" has {value} in {cell}{more}, and numbers below zero have no root. '
+        "Correct the cell or change the entry in {at}.",
+    ),
+    "reciprocal-of-zero": (
+        _R,
+        '"{column}" is 0 in {cell}{more}, and zero has no reciprocal. Correct the cell or change the entry in {at}.',
+    ),
+    "weight-not-positive": (
+        _R,
+        'The weight "{column}" is {value} in {cell}{more}; weights must be above zero. Empty the cell to leave the '
+        "row out.",
+    ),
+    "too-many-lags": (_R, "{lags} lags need more than the {rows} rows there are. Ask for fewer."),
+    "too-many-folds": (_R, "{folds} folds need at least as many rows; there are {rows}."),
+    # workbook: the data as found
+    "found-blanks": (_N, "{column} is blank in {cells}."),
+    "found-errors": (_W, "{column} holds an error in {cells}."),
+    "found-no-value": (_W, "{column} has a formula without a stored result in {cells}."),
+    "found-texts": (_W, "{column} holds a text among numbers in {cells}."),
+    "found-total-row": (
+        _W,
+        'The last row ({cell} reads "{text}") looks like a total. If it is one, move it away from the cases.',
+    ),
+    "found-repeated-rows": (_N, "{count} rows are the same in every column used, such as rows {first} and {second}."),
+    "found-single-case": (
+        _N,
+        "{column}: only one case is '{level}' ({cell}){more}; what is said of that level rests on it alone.",
+    ),
+    "found-nearly-constant": (_N, "{column} is {value} in {count} of {rows} rows; it differs only in {cells}."),
+    "found-spelled-twice": (
+        _W,
+        "{column}: '{level}' in {cells} and '{other}' differ only in {difference}; they count as two levels.",
+    ),
+    "found-far-value": (_N, "{column}: {value} in {cell} is far from the rest{more}. Is it typed right?"),
+    "found-order-twice": (_N, "{column}: {value} comes up more than once, in {cell} for instance."),
+    "found-order-gap": (_N, "{column}: there is a gap between {first} and {second}{more}."),
+    # sheets: the request's answers
+    "fitted": (_N, "Fitted {when} from {used} of {rows} rows."),
+    "not-fitted": (_R, "Not fitted."),
+    "more-notes": (_N, "And {count} more: see {sheet}."),
 }
 
 

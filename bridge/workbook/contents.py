@@ -3,8 +3,9 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
+from bridge.messages import Problem
 from bridge.workbook.request import Scalar
 from bridge.workbook.tables import Table
 
@@ -21,11 +22,13 @@ class RawSheet:
 @dataclass(frozen=True, slots=True)
 class Contents:
     """One workbook, read once. `own` holds our own sheets by our name for them (`fit request`, ...);
-    `sheet_names` all visible worksheets that are not ours, in order; `tables` those that look like a table."""
+    `sheet_names` all visible worksheets that are not ours, in order; `tables` those that look like a table.
+    `unread` says of a sheet why no table could be read from it."""
 
     sheet_names: tuple[str, ...]
     tables: Mapping[str, Table]
     own: Mapping[str, RawSheet]
+    unread: Mapping[str, Problem] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, slots=True)

@@ -46,4 +46,6 @@ def _add_column(made: hashlib.blake2b, column: DataColumn) -> None:
     made.update(column.numbers.tobytes())
     made.update(column.state.tobytes())
     if column.texts:
-        made.update("\x1f".join(text if text is not None else "\x1e" for text in column.texts).encode("utf-8", "replace"))
+        made.update(
+            "\x1f".join(text if text is not None else "\x1e" for text in column.texts).encode("utf-8", "replace")
+        )

@@ -26,7 +26,9 @@ class ModelRequest:
     """One model column of the grid, read.
 
     `spec` is None where a refusal among `problems` stops it. `entries` maps what was asked to its cell address in
-    `fit request`: keys are data column names, and settings' labels. `labels` the data column that names rows.
+    `fit request` as it is to stand: keys are data column names and settings' labels (the second filter's `is` and
+    `value` as `and is`, `and value`), `x crossed with y`, `data sheet` and `model` (the header). `label` is the data
+    column that names rows.
     """
 
     name: str
@@ -52,8 +54,10 @@ class GridRow:
 class Grid:
     """The sheet as found: every cell's value by (row, column), and where the blocks' rows stand.
 
-    An empty `cells` means first contact. `model_columns` maps a model's name to its zero-based column.
-    Header rows are None where the block is missing.
+    An empty `cells` means first contact. `model_columns` maps a model's name to its zero-based column; a name that
+    stands over several columns is told apart by a number (`C (2)`). Header rows are None where the block is missing.
+    `label_column` holds the labels; `other_columns` maps `kind`, `filled`, `range`, `with`, `blank means` to their
+    zero-based columns, as far as they are there.
     """
 
     cells: Mapping[tuple[int, int], Scalar]
@@ -68,12 +72,16 @@ class Grid:
     setting_rows: tuple[GridRow, ...]
     status_header: int | None
     status_rows: tuple[GridRow, ...]
+    label_column: int = 0
+    other_columns: Mapping[str, int] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, slots=True)
 class Request:
-    """The whole request: the grid as found, the models in grid order, and problems that concern no single model."""
+    """The whole request: the grid as it is to stand (what was found, with missing rows and new data columns added),
+    the models in grid order, problems that concern no single model, and the data sheets that can be named."""
 
     grid: Grid
     models: tuple[ModelRequest, ...]
     problems: tuple[Problem, ...] = ()
+    sheet_names: tuple[str, ...] = ()

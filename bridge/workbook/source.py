@@ -7,41 +7,47 @@ from typing import Protocol
 
 
 class SheetEntry(Protocol):
-    """One tab. `state`: visible, hidden or veryHidden. `kind`: worksheet, chartsheet, ...
-
-    `ours`: our name for it where it carries the bridge's mark, else None. `empty`: no cell holds anything.
-    """
+    """One tab."""
 
     @property
-    def name(self) -> str: ...
+    def name(self) -> str:
+        """What the tab says."""
 
     @property
-    def state(self) -> str: ...
+    def state(self) -> str:
+        """visible, hidden or veryHidden."""
 
     @property
-    def kind(self) -> str: ...
+    def kind(self) -> str:
+        """worksheet, chartsheet, ..."""
 
     @property
-    def ours(self) -> str | None: ...
+    def ours(self) -> str | None:
+        """Our name for it where it carries the bridge's mark, else None."""
 
     @property
-    def empty(self) -> bool: ...
+    def empty(self) -> bool:
+        """No cell holds anything."""
 
 
 class ExcelTable(Protocol):
-    """A table object on a worksheet: its name, its whole range (`B3:F120`), its header rows (1 or 0), totals rows."""
+    """A table object on a worksheet."""
 
     @property
-    def name(self) -> str: ...
+    def name(self) -> str:
+        """The table's name."""
 
     @property
-    def ref(self) -> str: ...
+    def ref(self) -> str:
+        """Its whole range, `B3:F120`."""
 
     @property
-    def header_rows(self) -> int: ...
+    def header_rows(self) -> int:
+        """1, or 0 where the headers are switched off."""
 
     @property
-    def totals_rows(self) -> int: ...
+    def totals_rows(self) -> int:
+        """1 where a totals row is switched on, else 0."""
 
 
 class SheetSource(Protocol):

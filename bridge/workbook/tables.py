@@ -39,7 +39,8 @@ class DataColumn:
     is named after its column letters (`column D`), a repeated one gets ` (2)`. `unit` is what stands in the header's
     last (…) or […]. `index` is the zero-based column on the sheet.
     `numbers` (n,): the number, a date's serial, 1/0 for yes/no; NaN where there is none.
-    `texts`: per row the text, or None; the tuple is empty for a column without any text.
+    `texts`: per row the text, or None; the tuple is empty for a column without any text. An empty text in a BLANK row
+    is a cell that holds a text in which nothing can be seen (spreadsheet programs count such a cell as filled).
     `state` (n,) holds a `State` per row.
     """
 
@@ -58,6 +59,7 @@ class Table:
 
     `header_row` one-based; `rows` (n,) the sheet row of each data row (wholly empty rows are not data rows);
     `hidden` (n,) True where the sheet row is hidden or filtered out. `excel_table` its name, if it is one.
+    `date1904`: date serials count from 1904, not from 1900.
     """
 
     sheet: str
@@ -66,6 +68,7 @@ class Table:
     hidden: NDArray[np.bool_]
     columns: tuple[DataColumn, ...]
     excel_table: str | None = None
+    date1904: bool = False
 
     def column(self, name: str) -> DataColumn | None:
         """The column called `name` (case and outer spaces aside), or None."""
