@@ -26,6 +26,7 @@ from tests.stress.savers import SAVERS, Saver, dawdle
 from tests.stress.zips import contents, look, saved, with_result
 
 PATIENCE_S = 15.0
+PASSING = ("file-missing", "file-being-saved", "file-not-whole")
 TMPFS, DISK = Path("/dev/shm"), Path("/var/tmp")
 
 
@@ -61,7 +62,9 @@ def bridge(path: Path, seed: int) -> None:
             dawdle(chance, 1)
             outcome = write_back(snapshot, with_result(snapshot.data))
         except FileRefused as refusal:
-            refused += refusal.problem.key not in ("file-missing", "file-being-saved", "file-not-whole")
+            if refusal.problem.key not in PASSING:
+                print(f"{refusal.problem.key}: {refusal.problem.text}", file=sys.stderr)
+                refused += 1
             continue
         written += outcome.kind == "written"
         changed += outcome.kind == "changed"
@@ -115,7 +118,8 @@ def main() -> int:
             bridge(wanted.bridge, wanted.seed)
         return 0
     bad = 0
-    for parent in wanted.folder or [folder for folder in (TMPFS, DISK) if folder.is_dir()]:
+    for parent in wanted.folder or [folder for folder in (PASSING = ("file-missing", "file-being-saved", "file-not-whole")
+TMPFS, DISK) if folder.is_dir()]:
         for style in wanted.style or SAVERS:
             start = time.monotonic()
             with tempfile.TemporaryDirectory(dir=parent, prefix="races-") as folder:
