@@ -10,7 +10,7 @@ import numpy as np
 
 from bridge.page.cells import Format, Value, address, quoted
 from bridge.page.charts import Chart
-from bridge.page.sheet import Sheet
+from bridge.page.sheet import Link, Sheet
 from bridge.regression.results import ModelResult
 from bridge.sheets import behind, charts, figures, readings, remarks, style, words
 from bridge.sheets.book import Book, ModelSheet
@@ -65,21 +65,23 @@ def lay_out(book: Book) -> Sheet:
 
 
 def _contents(paper: Paper, book: Book) -> int:
-    """Room for one line of links to the models' blocks; its row."""
-    paper.row += 1
-    return paper.row - 1
+    """Room for links to the models' blocks, several a line; its first row."""
+    row = paper.row
+    if len(book.models) > 1:
+        paper.row += math.ceil(len(book.models) / _LAST)
+        paper.gap(6)
+    return row
 
 
 def _link_contents(paper: Paper, book: Book, row: int, starts: dict[str, int]) -> None:
     if len(starts) < 2:
         return
-    end, paper.row = paper.row, row
     place = quoted(book.title("fit diagnostics"))
     look = replace(style.BODY, color=style.DEEP, underline=True)
-    for column, (name, start) in zip((0, 1, 2, 3, 4, 5, 6), starts.items(), strict=False):
-        paper.put(column, f"to {name}", look)
-        paper.link(column, f"{place}!{address(start, 0)}")
-    paper.row = end
+    for at, (name, start) in enumerate(starts.items()):
+        down, column = divmod(at, _LAST)
+        paper.put(column, f"to {name}", look, row + down)
+        paper.links.append(Link(row + down, column, f"{place}!{address(start, 0)}"))
 
 
 def _examined(paper: Paper, book: Book) -> None:
