@@ -1,0 +1,59 @@
+"""One door to a least-squares fit: exact to 10,000 rows; beyond, by blocks, unless the digits would not do.
+
+Everything else in the numeric core reads the Kernel that comes out.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from bridge.regression import blocked, design, exact_fit
+from bridge.regression.errors import ConstantResponse, OutOfDomain, TooFewRows
+from bridge.regression.kernel import Kernel
+from bridge.regression.results import Alias, DesignColumn
+from bridge.regression.spec import ModelSpec, Observations
+from bridge.regression.threads import one_blas_thread
+
+EXACT_ROWS = 10_000
+LEAST_DIGITS = 13
+
+Array = NDArray[np.float64]
+
+
+@dataclass(frozen=True, slots=True)
+class Solved:
+    """The kernel of the columns kept, the columns left out, and the layout of all columns asked for."""
+
+    kernel: Kernel
+    aliased: tuple[Alias, ...]
+    layout: design.Layout
+
+
+def solve(spec: ModelSpec, observations: Observations) -> Solved:
+    """Fit by (weighted) least squares. Raises RegressionError."""
+    layout = design.layout(spec, observations)
+    if observations.n < 2:
+        raise TooFewRows(observations.n, len(layout.columns))
+    y = design.response(spec, observations)
+    weights = design.weights(spec, observations)
+    if not y.any() or (spec.intercept and (y == y[0]).all()):
+        raise ConstantResponse(f"{spec.response} is {y[0]!r} in every row", spec.response)
+    with one_blas_thread():
+        if observations.n > EXACT_ROWS:
+            quick = blocked.fit(spec, observations, layout.columns, y, weights)
+            if quick is not None and quick.digits is not None and quick.digits >= LEAST_DIGITS:
+                return Solved(quick, (), layout)
+        x = _finite(design.matrix(layout.columns, observations), layout.columns)
+        return Solved(*exact_fit.fit(spec, observations, layout, x, y, weights), layout)
+
+
+def _finite(x: Array, columns: tuple[DesignColumn, ...]) -> Array:
+    sizes = np.abs(x).max(axis=0, initial=0.0)
+    if not np.isfinite(sizes).all():
+        j = int(np.argmax(~np.isfinite(sizes)))
+        index = int(np.argmax(~np.isfinite(x[:, j])))
+        raise OutOfDomain(f"{columns[j].label} is too large a number", columns[j].factors[0].column, index)
+    return x
