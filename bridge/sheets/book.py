@@ -5,7 +5,6 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
 from datetime import datetime
-from typing import Protocol
 
 from bridge.messages import Problem
 from bridge.regression.results import ModelResult, Nested
@@ -45,15 +44,6 @@ class ModelSheet:
         return self.request.name
 
 
-class Finding(Protocol):
-    """Something found in the data before fitting, in words."""
-
-    @property
-    def text(self) -> str:
-        """One or two sentences that name the cells concerned."""
-        ...
-
-
 @dataclass(frozen=True, slots=True)
 class Book:
     """All of it. `titles` maps our sheet names to what their tabs say (the user may have renamed one).
@@ -70,7 +60,7 @@ class Book:
     history: tuple[HistoryLine, ...]
     titles: Mapping[str, str]
     problems: tuple[Problem, ...] = ()
-    findings: Mapping[str, Sequence[Finding]] = field(default_factory=dict)
+    findings: Mapping[str, Sequence[Problem]] = field(default_factory=dict)
 
     def title(self, name: str) -> str:
         """What the tab of our sheet `name` says."""

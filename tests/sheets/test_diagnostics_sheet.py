@@ -3,11 +3,12 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass, replace
+from dataclasses import replace
 
 import numpy as np
 import pytest
 
+from bridge.messages import Problem, Severity
 from bridge.regression.results import Alias, SearchResult, Subset
 from bridge.sheets import behind, diagnostics, readings, words
 from tests.sheets import layout
@@ -93,13 +94,8 @@ def test_a_search_shows_its_runners_up_under_a_warning():
     assert "Chosen; 8 subsets compared." in texts
 
 
-@dataclass(frozen=True)
-class Found:
-    text: str
-
-
 def test_what_was_found_in_the_data_stands_first():
-    told = replace(yard(), findings={"Refits": (Found("hull: 'Oak' in D17 may be 'oak'."),)})
+    told = replace(yard(), findings={"Refits": (Problem("test", Severity.NOTE, "hull: 'Oak' in D17 may be 'oak'."),)})
     texts = layout.texts(diagnostics.lay_out(told))
     assert texts.index("hull: 'Oak' in D17 may be 'oak'.") < texts.index("check")
     quiet = replace(yard(), findings={"Refits": ()})
