@@ -194,8 +194,11 @@ def _kernel(spec: ModelSpec, observations: Observations, problem: _Shifted, prod
     coefficients, low = _unshifted(problem, solved, spec.intercept)
     r_inverse = solved.r_inverse.copy()
     r_inverse[0] -= problem.shift @ solved.r_inverse
-    squares = np.diag(products)[:-1] + 2 * problem.shift * products[0, :-1] + problem.shift**2 * products[0, 0]
-    lengths = np.sqrt(squares if spec.intercept else np.diag(products)[:-1])
+    squares = about_mean = np.diag(products)[:-1].copy()
+    if spec.intercept:
+        about_mean = squares - products[0, :-1] ** 2 / products[0, 0]
+        squares = squares + 2 * problem.shift * products[0, :-1] + problem.shift**2 * products[0, 0]
+    lengths = np.sqrt(squares)
     scaled = r_inverse * lengths[:, None]
     slopes = np.linalg.norm(r_inverse, axis=1)
     sd = np.sqrt(solved.rss / (n - p))
@@ -210,6 +213,7 @@ def _kernel(spec: ModelSpec, observations: Observations, problem: _Shifted, prod
         coefficients_low=low,
         r_inverse=r_inverse,
         standard_errors=sd * slopes,
+        column_ss=about_mean,
         rss=solved.rss,
         tss=solved.tss,
         residual_sd=float(sd),

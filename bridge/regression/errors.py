@@ -9,6 +9,7 @@ RegressionError
   OutOfDomain         log of a number <= 0, root of a negative, reciprocal of 0
   BadWeight           a weight that is not positive
   TooManyColumns      the design would be wider than this core fits
+  UnknownLevel        a new case has a level that the data of the fit do not have
 """
 
 from __future__ import annotations
@@ -58,3 +59,7 @@ class BadWeight(RegressionError):
 
 class TooManyColumns(RegressionError):
     """The design matrix would have too many columns."""
+
+
+class UnknownLevel(RegressionError):
+    """A new case has a level that the data of the fit do not have."""

@@ -55,7 +55,8 @@ class Dependence:
 class Solution:
     """Arrays of Decimals in true units; p columns kept (indices `kept`).
 
-    `variances` (p,): the diagonal of (X'WX)^-1. `in_order` (p,): what each column adds to the sum explained.
+    `variances` (p,): the diagonal of (X'WX)^-1. `column_ss` (p,): each column's sum of squares, about its mean with
+    an intercept. `in_order` (p,): what each column adds to the sum explained.
     `total`: about the mean with an intercept, else about zero. `digits`: the precision it was found in.
     """
 
@@ -64,6 +65,7 @@ class Solution:
     coefficients: Objects
     r_inverse: Objects
     variances: Objects
+    column_ss: Objects
     in_order: Objects
     rss: Decimal
     total: Decimal
@@ -236,6 +238,7 @@ def _in_units(
         for row, j in enumerate(_left_out(problem, kept))
         if j not in gone
     ]
+    spread = done.factors[:p] * done.factors[:p] * done.pivots
     total = done.total if problem.intercept else Decimal(problem.cross_products[-1, -1])
     return Solution(
         tuple(kept),
@@ -243,6 +246,7 @@ def _in_units(
         _without_noise(problem, kept, coefficients, unit / scales),
         r_inverse,
         np.asarray((r_inverse * r_inverse).sum(axis=1)),
+        spread[:, int(problem.intercept) :].sum(axis=1) * scales * scales * weight,
         along * along * done.pivots * unit * unit * weight,
         rss,
         total * unit * unit * weight,

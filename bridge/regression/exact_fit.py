@@ -90,6 +90,7 @@ def _kernel(case: _Case, spec: ModelSpec, observations: Observations) -> Kernel:
         ),
         r_inverse=r_inverse,
         standard_errors=np.array([float((variance * v).sqrt()) for v in solution.variances]),
+        column_ss=solution.column_ss.astype(np.float64),
         rss=float(solution.rss),
         tss=float(solution.total),
         residual_sd=float(variance.sqrt()),

@@ -60,6 +60,7 @@ class Kernel:
     `r_inverse` (p, p) upper triangular: (X'WX)^-1 = R^-1 R^-T.
     `standard_errors` (p,): the ordinary ones, s * length of the rows of R^-1.
     `fitted`, `residual` (n,): unweighted, y - fitted. `leverage` (n,): of the weighted design, w x'(X'WX)^-1 x.
+    `column_ss` (p,): weighted sum of squares of each column, about its mean with an intercept, else about zero.
     `basis` (n, p): X R^-1 row by row, unweighted, accurate however nearly the columns depend on each other (its
     weighted columns are orthonormal); None in the blocked path, where `basis_rows` forms it a block at a time.
     `condition_number`: of the weighted columns scaled to length 1, intercept included.
@@ -76,6 +77,7 @@ class Kernel:
     coefficients_low: Array
     r_inverse: Array
     standard_errors: Array
+    column_ss: Array
     rss: float
     tss: float
     residual_sd: float

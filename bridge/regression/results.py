@@ -86,6 +86,7 @@ class Fit:
     `r_squared` is about the mean with an intercept, about zero without. `digits` None: exact path.
     `weights` (n,) None: unweighted. `robust_weights` (n,): Huber's, resistant fits only.
     `fitted`, `residual`: (n,) on the fitted scale, unweighted residuals.
+    `coefficients_low` (p,): what the coefficients lack by being rounded to doubles, for sums whose terms cancel.
     """
 
     n: int
@@ -122,6 +123,7 @@ class Fit:
     robust_weights: Array | None
     condition_number: float
     digits: float | None
+    coefficients_low: Array | None = None
 
 
 @dataclass(frozen=True, slots=True)
