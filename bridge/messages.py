@@ -308,7 +308,7 @@ CATALOGUE: dict[str, tuple[Severity, str]] = {
         _R,
         '{at} holds {typed}, where the role of a column is expected, for example "predictor" or "log response".',
     ),
-    "entry-unknown-word": (_R, '"{typed}" in {at} is not understood because of "{word}".{hint}'),
+    "entry-unknown-word": (_R, '"{typed}" in {at} is not understood{because}.{hint}'),
     "entry-without-role": (
         _R,
         '"{typed}" in {at} does not say what the column is. Add a role, for example "predictor".',

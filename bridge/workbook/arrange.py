@@ -24,7 +24,7 @@ HINT = (
     'Answers appear at the bottom and in "fit results".'
 )
 DEFAULT_MODELS = ("A", "B", "C")
-_SPARE_CROSSED = 2
+SPARE_CROSSED = 2
 
 
 @dataclass(frozen=True, slots=True)
@@ -38,7 +38,7 @@ class Arranged:
 
 def arrange(found: Grid, tables: Mapping[str, Table], sheet_names: Sequence[str]) -> Arranged:
     """The grid to lay out for what was found. `tables` are the data sheets' tables by sheet name."""
-    page = _Page(dict(found.cells), dict(found.formulas))
+    page = _Page(dict(found.cells), dict(found.formulas), found.dates)
     if found.column_header is None:
         _first_contact(page, tables, sheet_names)
     grid = page.grid()
@@ -57,11 +57,16 @@ def arrange(found: Grid, tables: Mapping[str, Table], sheet_names: Sequence[str]
 class _Page:
     """The sheet's cells while they are being arranged."""
 
-    def __init__(self, cells: dict[tuple[int, int], Scalar], formulas: dict[tuple[int, int], str]) -> None:
-        self.cells, self.formulas = cells, formulas
+    def __init__(
+        self,
+        cells: dict[tuple[int, int], Scalar],
+        formulas: dict[tuple[int, int], str],
+        dates: frozenset[tuple[int, int]],
+    ) -> None:
+        self.cells, self.formulas, self.dates = cells, formulas, dates
 
     def grid(self) -> Grid:
-        return grids.read(RawSheet(REQUEST, self.cells, self.formulas))
+        return grids.read(RawSheet(REQUEST, self.cells, self.formulas, self.dates))
 
     def put(self, row: int, column: int, value: Scalar) -> None:
         """A text of the bridge's; a formula of the user's keeps its cell."""
@@ -78,10 +83,13 @@ class _Page:
 
     def insert(self, row: int, count: int) -> None:
         """Make room: `row` and everything below it moves down by `count`."""
-        self.cells = {(at + count if at >= row else at, column): value for (at, column), value in self.cells.items()}
-        self.formulas = {
-            (at + count if at >= row else at, column): text for (at, column), text in self.formulas.items()
-        }
+
+        def moved(at: tuple[int, int]) -> tuple[int, int]:
+            return (at[0] + count if at[0] >= row else at[0], at[1])
+
+        self.cells = {moved(at): value for at, value in self.cells.items()}
+        self.formulas = {moved(at): text for at, text in self.formulas.items()}
+        self.dates = frozenset(moved(at) for at in self.dates)
 
     def room_after(self, row: int, count: int, then: int | None) -> int:
         """The first of `count` free rows after `row`, an empty one left before `then`; rows are added as needed."""
@@ -159,7 +167,7 @@ def _complete_block(page: _Page, label: str) -> None:
     if then is None:
         row = max(page.used_rows()) + 2
     else:
-        room = 2 + (_SPARE_CROSSED if label == grids.CROSSED else 0)
+        room = 2 + (SPARE_CROSSED if label == grids.CROSSED else 0)
         page.insert(then, room)
         row = then
     page.put(row, grid.label_column, label)
@@ -198,7 +206,7 @@ def _spare_crossed(page: _Page) -> None:
         return
     last = max((row.row for row in grid.crossed_rows), default=grid.crossed_header)
     then = next((row for row in (grid.setting_header, grid.status_header) if row is not None), None)
-    page.room_after(last, _SPARE_CROSSED, then)
+    page.room_after(last, SPARE_CROSSED, then)
 
 
 def _head_blocks(page: _Page) -> None:

@@ -103,12 +103,18 @@ def _grow(column: _Growing, cells: Sequence[object]) -> set[type]:
         column.texts.append(len(cells))
         return kinds
     texts: Sequence[str | None] | int = len(cells)
-    state = np.fromiter((_CODES.get(type(cell), State.TEXT) for cell in cells), np.uint8, len(cells))
+    if kinds == {str}:
+        state = np.full(len(cells), State.TEXT, dtype=np.uint8)
+    else:
+        state = np.fromiter((_CODES.get(type(cell), State.TEXT) for cell in cells), np.uint8, len(cells))
     if str in kinds:
-        texts = [_seen(cell, column.known) if type(cell) is str else None for cell in cells]
-        seen = np.fromiter((text is not None for text in texts), np.bool_, len(cells))
-        state[(state == State.TEXT) & ~seen] = State.BLANK
-        texts = texts if seen.any() else len(cells)
+        known = column.known
+        texts = [(known.get(cell) or _seen(cell, known)) if type(cell) is str else None for cell in cells]
+        unseen = texts.count(None)
+        if unseen:
+            seen = np.fromiter((text is not None for text in texts), np.bool_, len(cells))
+            state[(state == State.TEXT) & ~seen] = State.BLANK
+        texts = texts if unseen < len(cells) else len(cells)
     column.numbers.append(_numbers(cells, kinds))
     column.state.append(state)
     column.texts.append(texts)
@@ -130,10 +136,7 @@ def _number(cell: object) -> float:
 
 
 def _seen(text: str, known: dict[str, str]) -> str | None:
-    """The text, one object for equal ones; None where only spaces would be seen."""
-    found = known.get(text)
-    if found is not None:
-        return found
+    """A text met for the first time, to be one object with its equals; None where only spaces would be seen."""
     if not text or text.isspace():
         return None
     if len(known) < _MOST_SHARED:

@@ -12,11 +12,15 @@ from bridge.workbook.tables import Table
 
 @dataclass(frozen=True, slots=True)
 class RawSheet:
-    """A small sheet cell by cell: stored values and formula texts by zero-based (row, column)."""
+    """A small sheet cell by cell: stored values and formula texts by zero-based (row, column).
+
+    `dates` are the cells that show their number as a date.
+    """
 
     name: str
     values: Mapping[tuple[int, int], Scalar]
     formulas: Mapping[tuple[int, int], str]
+    dates: frozenset[tuple[int, int]] = frozenset()
 
 
 @dataclass(frozen=True, slots=True)

@@ -6,6 +6,7 @@ import hashlib
 from collections.abc import Iterable, Mapping
 
 from bridge.workbook.contents import NewCase
+from bridge.workbook.naming import ColumnNames
 from bridge.workbook.request import ModelRequest, Request
 from bridge.workbook.tables import DataColumn, Table
 
@@ -16,12 +17,13 @@ def digest(version: str, request: Request, tables: Mapping[str, Table], typed: I
     `typed` are frozen values (new cases and the like). Looks, notes and the bridge's own answers do not count.
     """
     made = hashlib.blake2b(digest_size=16)
-    _add(made, version, request.grid.data_sheets, [column.name for t in tables.values() for column in t.columns])
+    in_use = ColumnNames(request.grid.data_sheets, tables).tables
+    _add(made, version, request.grid.data_sheets, [column.name for t in in_use for column in t.columns])
     for model in request.models:
         _add_model(made, model)
     for problem in request.problems:
         _add(made, problem.text)
-    for table in tables.values():
+    for table in in_use:
         _add(made, table.sheet, table.header_row, table.excel_table)
         made.update(table.rows.tobytes())
         made.update(table.hidden.tobytes())

@@ -66,7 +66,6 @@ _SHAPES = {
 _POWERS = {"squared": 2, "cubed": 3}
 _FILLING = frozenset({"a", "an", "as", "the", "with", "of", "and", "to", "at", "square", "natural"})
 _NOT_USED = frozenset({"", "-", "–", "—", "no", "none", "not used", "unused"})
-WORDS = (*(role.value for role in Role), "log", "root", "reciprocal", "squared", "cubed", "to power", "bend at", "base")
 _NUMBER = r"[-+\u2212]?\d+(?:[.,]\d+)*(?:[eE][-+]?\d+)?"
 _BEND = re.compile(
     rf"\bbends?\b(?:\s+at)?[\s:=]*({_NUMBER}(?:(?:\s*(?:\band\b|&|;|\+)\s*|\s*,\s+|\s+){_NUMBER})*)", re.I
@@ -129,7 +128,8 @@ def _parsed(text: str) -> Entry | Misread:
     words = [word for word in re.split(r"[\s,;:+/()]+", rest.casefold()) if word and word not in _FILLING]
     unknown = [word for word in words if word not in _ROLES and word not in _SHAPES and word not in _POWERS]
     if unknown:
-        return Misread("entry-unknown-word", {"word": unknown[0], "hint": _hint(text, unknown[0])})
+        because = "" if unknown[0] == text.casefold() else f' because of "{unknown[0]}"'
+        return Misread("entry-unknown-word", {"because": because, "hint": _hint(text, unknown[0])})
     degrees = [_POWERS[word] for word in words if word in _POWERS] + ([degree] if degree else [])
     shapes = [_SHAPES[word] for word in dict.fromkeys(words) if word in _SHAPES]
     roles = list(dict.fromkeys(_ROLES[word] for word in words if word in _ROLES))
@@ -141,7 +141,7 @@ def _hint(text: str, word: str) -> str:
     known = (*_ROLES, *_SHAPES, *_POWERS, "bend", "base", "power")
     near = spelling.nearest(word, known)
     if near is None:
-        return ""
+        return f" The roles are {', '.join(role.value for role in Role)}."
     fixed = re.sub(re.escape(word), near, text, count=1, flags=re.I)
     return f' Did you mean "{fixed}"?'
 

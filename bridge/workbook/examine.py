@@ -143,7 +143,7 @@ def _of_levels(table: Table, use: Use, rows: Rows) -> Iterator[Problem]:
     if len(single) and len(single) < len(counts):
         at = int(rows[np.flatnonzero(levels.codes == single[0])[0]])
         cell = data_cell(table, use.column, at)
-        more = f" (and {len(single) - 1} more levels)" if len(single) > 1 else ""
+        more = f" (and {len(single) - 1} more like it)" if len(single) > 1 else ""
         yield say("found-single-case", cell=cell, column=use.name, level=levels.names[single[0]], more=more)
     if counts.max() >= _NEARLY_ALL * len(rows) and len(rows) >= _LEAST_FOR_CONSTANT:
         most = levels.names[int(counts.argmax())]

@@ -32,11 +32,12 @@ def read(raw: RawSheet | None) -> Grid:
     """The grid on a sheet; one without cells or without the `column` block has None for its header rows."""
     cells: Cells = raw.values if raw is not None else {}
     formulas = raw.formulas if raw is not None else {}
+    dates = raw.dates if raw is not None else frozenset()
     top = _column_header(cells)
     if top is None:
         label_column = _label_column(cells)
         sheets = _data_sheets(cells, label_column, None)
-        return Grid(cells, formulas, sheets, {}, None, (), None, (), None, (), None, (), label_column)
+        return Grid(cells, formulas, sheets, {}, None, (), None, (), None, (), None, (), label_column, {}, dates)
     header, label_column = top
     page = _Page(cells, label_column, _model_columns(cells, header, label_column))
     crossed = page.block_header(CROSSED, header)
@@ -59,6 +60,7 @@ def read(raw: RawSheet | None) -> Grid:
         page.status_rows(status),
         label_column,
         others,
+        dates,
     )
 
 

@@ -140,11 +140,11 @@ class _Book:
         if end is None:
             return SheetCells(tab, (), np.empty(0, np.bool_))
         columns, dates = typed.gather(sheet.iter_rows(), end[1] + 1)
+        merges = tuple(sheet.merged_cell_ranges or ())
         date1904 = _set_serials(columns, dates, xml)
         height = len(columns[0].state)
         hidden = np.zeros(height, np.bool_)
         hidden[marks.hidden[marks.hidden < height]] = True
-        merges = tuple(sheet.merged_cell_ranges or ())
         return SheetCells(tab, _marked(columns, marks), hidden, merges, date1904)
 
     def _raw(self, tab: str) -> RawSheet:
@@ -152,21 +152,26 @@ class _Book:
         xml = self._xml(tab)
         sheet = _guarded(lambda: self._reader.get_sheet_by_name(tab), tab)
         values: dict[tuple[int, int], Scalar] = {}
+        dates = set()
         for row, cells in enumerate(sheet.iter_rows() if sheet.end is not None else ()):
             for column, value in enumerate(cells):
-                if value != "" and isinstance(value, (str, float, int)):
+                if isinstance(value, (str, float, int)):
                     values[(row, column)] = value
+                else:
+                    dates.add((row, column))
         formulas: dict[tuple[int, int], str] = {}
         shared: dict[str, tuple[tuple[int, int], str]] = {}
         for cell in _parsed(lambda: list(markup.walk(xml)), tab):
             at = (cell.row, cell.column)
             if cell.kind == "e" and cell.value:
                 values[at] = cell.value
-            elif at not in values and cell.kind in ("", "n") and _is_number(cell.value):
+            elif at in dates and _is_number(cell.value):
                 values[at] = float(cell.value or 0)
             if cell.formula is not None:
                 formulas[at] = _formula(cell, shared)
-        return RawSheet(tab, values, {at: text for at, text in formulas.items() if text})
+        values = {at: value for at, value in values.items() if value != ""}
+        known = {at: text for at, text in formulas.items() if text}
+        return RawSheet(tab, values, known, frozenset(at for at in dates if at in values))
 
     def _empty_texts(self) -> tuple[int, ...]:
         if self._empty_shared is None:
@@ -319,4 +324,4 @@ def _texts(texts: tuple[str | None, ...], rows: NDArray[np.int64]) -> tuple[str 
     else:
         kept = (texts[row] for row in rows.tolist())
     taken = tuple(kept)
-    return taken if any(text is not None for text in taken) else ()
+    return taken if taken.count(None) < len(taken) else ()

@@ -57,7 +57,7 @@ class Grid:
     An empty `cells` means first contact. `model_columns` maps a model's name to its zero-based column; a name that
     stands over several columns is told apart by a number (`C (2)`). Header rows are None where the block is missing.
     `label_column` holds the labels; `other_columns` maps `kind`, `filled`, `range`, `with`, `blank means` to their
-    zero-based columns, as far as they are there.
+    zero-based columns, as far as they are there. `dates` are the cells that show their number as a date.
     """
 
     cells: Mapping[tuple[int, int], Scalar]
@@ -74,6 +74,7 @@ class Grid:
     status_rows: tuple[GridRow, ...]
     label_column: int = 0
     other_columns: Mapping[str, int] = field(default_factory=dict)
+    dates: frozenset[tuple[int, int]] = frozenset()
 
 
 @dataclass(frozen=True, slots=True)

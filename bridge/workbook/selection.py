@@ -14,6 +14,7 @@ from bridge.workbook.contents import Taken
 from bridge.workbook.entries import number
 from bridge.workbook.levels import as_levels
 from bridge.workbook.places import data_cell, data_cells, request_cell
+from bridge.workbook.ranking import most_useful_first
 from bridge.workbook.request import Filter, ModelRequest, Scalar
 from bridge.workbook.tables import DataColumn, Kind, State, Table
 from bridge.workbook.usage import Use, uses
@@ -50,7 +51,7 @@ def take(table: Table, asked: ModelRequest) -> tuple[Taken, Observations, tuple[
     taking.check_model(spec, observations, rows)
     taking.problems += examine.of_model(table, asked, columns, rows)
     taken = Taken(tuple(rows.tolist()), _left_out(table, asked, columns, kept, used))
-    return taken, observations, tuple(taking.problems)
+    return taken, observations, most_useful_first(taking.problems)
 
 
 def _values(table: Table, use: Use, rows: NDArray[np.intp]) -> NDArray[np.float64] | Levels:

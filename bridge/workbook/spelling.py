@@ -39,5 +39,7 @@ def _likeness(typed: str, word: str) -> float:
         return 1.0
     if sorted(typed) == sorted(word) and len(word) > 3:  # letters swapped
         return 0.95
+    if len(typed) > 2 and word.startswith(typed):
+        return 0.9
     match = SequenceMatcher(None, typed, word, autojunk=False)
     return match.ratio() if match.real_quick_ratio() > _NEAR and match.quick_ratio() > _NEAR else 0.0

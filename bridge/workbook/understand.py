@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import replace
 
-from bridge.messages import Problem, Severity, say
+from bridge.messages import Problem, say
 from bridge.page.cells import address, column_letters
 from bridge.regression.spec import CrossedTerm, Errors, ModelSpec, Search, Shape
 from bridge.workbook import entries, filters, roles, settings, spelling
@@ -15,6 +15,7 @@ from bridge.workbook.asking import Asking, Used
 from bridge.workbook.entries import Entry, Misread, Role
 from bridge.workbook.naming import table_named
 from bridge.workbook.places import request_cell
+from bridge.workbook.ranking import most_useful_first
 from bridge.workbook.request import Filter, Grid, GridRow, ModelRequest, Request
 from bridge.workbook.tables import Table
 
@@ -22,7 +23,6 @@ MOST_CANDIDATES = 30
 _YES = frozenset({"yes", "y", "x", "true", "1", "crossed"})
 _NO = frozenset({"no", "n", "false", "0", "-", "–"})
 _SHARED_ENDS = ("adjusted", "loo")  # fit_A_adjusted_r_squared: of model A, or r_squared of model A_adjusted?
-_WEIGHT = {Severity.REFUSAL: 0, Severity.WARNING: 1, Severity.NOTE: 2}
 
 
 def understand(
@@ -42,12 +42,6 @@ def understand(
     models = _without_clashes([model for model in read if model is not None], arranged.grid)
     general = (*(() if models and shared else problems), *_unnamed(arranged.grid))
     return Request(arranged.grid, models, general, tuple(sheet_names))
-
-
-def most_useful_first(problems: Sequence[Problem]) -> tuple[Problem, ...]:
-    """Refusals, then warnings, then notes; each message once."""
-    unique = {(problem.key, problem.text): problem for problem in problems}
-    return tuple(sorted(unique.values(), key=lambda problem: _WEIGHT[problem.severity]))
 
 
 # --- what concerns all models ------------------------------------------------------------------
