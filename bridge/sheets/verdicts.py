@@ -16,6 +16,7 @@ ROWS_PER_COEFFICIENT = 10  # fewer is few (common practice)
 OPTIMISM = 0.1
 MOST_EFFECTS = 3
 MOST_CONCERNS = 3
+MOST_NESTED = 10
 
 Fitted = tuple[ModelSheet, ModelResult]
 
@@ -221,13 +222,20 @@ def reach(models: Sequence[Fitted]) -> list[str]:
 
 
 def nested(book: Book) -> list[str]:
-    """Each pair of nested models with its partial F, in words."""
+    """Each pair of nested models with its partial F, in words; pairs that follow from two others are left out."""
     results = {model.name: (model, result) for model, result in book.fitted}
-    return [
+    inside: dict[str, set[str]] = {}
+    for pair in book.nested:
+        inside.setdefault(pair.large, set()).add(pair.small)
+    told = [
         _nested(pair, results[pair.small], results[pair.large])
         for pair in book.nested
-        if pair.small in results and pair.large in results
+        if pair.small in results
+        and pair.large in results
+        and not any(pair.small in inside.get(between, ()) for between in inside[pair.large])
     ]
+    more = len(told) - MOST_NESTED
+    return told if more <= 0 else [*told[:MOST_NESTED], f"{words.plural(more, 'more pair')} of models likewise."]
 
 
 def _nested(pair: Nested, small: Fitted, large: Fitted) -> str:

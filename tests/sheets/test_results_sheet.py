@@ -152,6 +152,24 @@ def test_nested_models_are_told_with_their_partial_f():
     assert "no more than chance may" in verdicts.nested(replace(yard(), nested=(weak,)))[0]
 
 
+def test_pairs_that_follow_from_two_others_are_not_told():
+    pair = yard().nested[0]
+    chain = (replace(pair, small="C", large="A"), pair, replace(pair, small="B", large="A"))
+    told = verdicts.nested(replace(yard(), nested=chain))
+    assert [text[:12] for text in told] == ["B contains C", "A contains B"]
+
+
+def test_groups_of_three_models_stand_on_pages_of_one_height():
+    told = twelve_models()
+    sheet = results.lay_out(told)
+    ground = layout.Ground(sheet)
+    starts = [row for (row, _), cell in sorted(sheet.cells.items()) if str(cell.value).startswith("In short: ")]
+    tops = [ground.top(row) for row in starts]
+    assert len(tops) == 4
+    assert tops[2] - tops[1] == pytest.approx(tops[3] - tops[2], abs=1)
+    assert tops[1] == pytest.approx(tops[2] - tops[1], abs=1)  # the title stands on the first page
+
+
 def test_cautions_and_what_needs_no_program_are_on_the_page():
     for told in (yard(), five_rows(), twelve_models()):
         text = "\n".join(layout.texts(results.lay_out(told)))
