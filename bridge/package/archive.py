@@ -74,11 +74,11 @@ def read_archive(data: bytes, limits: Limits) -> Archive:
         raise FileRefused(say("file-too-big", size=len(data) // (1 << 20), limit=limits.file // (1 << 20)))
     try:
         end = _find_end(data)
-        members = _members(data, end, limits)
+        members, first = _members(data, end, limits)
     except (struct.error, IndexError, UnicodeDecodeError) as error:
         raise FileRefused(say("zip-damaged", detail="its list of members cannot be read")) from error
     _check_sizes(members, limits)
-    return Archive(members, bytes(data[: end.shift]), end.comment)
+    return Archive(members, bytes(data[:first]), end.comment)
 
 
 @dataclass(frozen=True, slots=True)
@@ -133,7 +133,8 @@ def _end64(data: bytes, at: int) -> tuple[int, int, int, int] | None:
     return count, size, offset, record
 
 
-def _members(data: bytes, end: _End, limits: Limits) -> tuple[Member, ...]:
+def _members(data: bytes, end: _End, limits: Limits) -> tuple[tuple[Member, ...], int]:
+    """The members, and where the first of them begins."""
     if end.count > limits.members:
         raise FileRefused(say("too-many-members", count=end.count, limit=limits.members))
     members: list[Member] = []
@@ -149,7 +150,7 @@ def _members(data: bytes, end: _End, limits: Limits) -> tuple[Member, ...]:
     if at > end.start + end.size:
         raise FileRefused(say("zip-damaged", detail="its list of members is longer than it says"))
     _check_spans(spans, end.start)
-    return tuple(members)
+    return tuple(members), spans[0][0] if spans else end.shift
 
 
 def _central_entry(data: bytes, at: int) -> tuple[Member, int, int]:
@@ -287,6 +288,19 @@ def content(member: Member, limit: int) -> bytes:
     if member.size > limit:
         raise FileRefused(say("unpacks-too-big", member=member.name))
     return b"".join(unpacked(member, limit))
+
+
+def readable(member: Member) -> Iterator[bytes]:
+    """A member's content in pieces, as far as it can be unpacked and no longer than its directory entry says."""
+    length = 0
+    try:
+        for piece in _inflated(member):
+            length += len(piece)
+            if length > member.size:
+                return
+            yield piece
+    except (zlib.error, FileRefused):
+        return
 
 
 def check_length(member: Member, limits: Limits) -> None:

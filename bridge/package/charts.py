@@ -95,12 +95,18 @@ def _line(series: Series) -> str:
 def _marker(series: Series) -> str:
     if series.marker is None:
         return '<c:marker><c:symbol val="none"/></c:marker>'
-    fill = _ink(series.color if series.marker_filled else "FFFFFF")
+    # A hollow marker gets a tint, not white: some programs draw no edges, and white would vanish.
+    fill = _ink(series.color if series.marker_filled else _tint(series.color))
     if series.marker in _LINE_ONLY:
         fill = "<a:noFill/>"
     edge = f'<a:ln w="9525">{_ink(series.color)}</a:ln>'
     size = min(72, max(2, series.marker_size))
     return f'<c:marker><c:symbol val="{series.marker}"/><c:size val="{size}"/><c:spPr>{fill}{edge}</c:spPr></c:marker>'
+
+
+def _tint(colour: str) -> str:
+    """A colour mixed with white, four parts in ten of it left."""
+    return "".join(f"{round(255 - (255 - int(colour[at : at + 2], 16)) * 0.4):02X}" for at in (0, 2, 4))
 
 
 _SHOWN_NOTHING = (
@@ -147,8 +153,12 @@ def _axis(axis: Axis, its_id: int, other: int, position: str) -> str:
         f'<c:numFmt formatCode="{xml.attribute(axis.number_format)}" sourceLinked="0"/>'
         f'<c:majorTickMark val="none"/><c:minorTickMark val="none"/><c:tickLblPos val="{place}"/>'
         f'<c:spPr><a:ln w="9525">{_ink(_AXIS)}</a:ln></c:spPr>{_text_properties(900, _LABEL_INK)}'
-        f'<c:crossAx val="{other}"/><c:crosses val="autoZero"/><c:crossBetween val="midCat"/></c:valAx>'
+        f'<c:crossAx val="{other}"/><c:crosses val="autoZero"/><c:crossBetween val="midCat"/>{_step(axis)}</c:valAx>'
     )
+
+
+def _step(axis: Axis) -> str:
+    return "" if axis.step is None else f'<c:majorUnit val="{float(axis.step)!r}"/>'
 
 
 def _scaling(axis: Axis) -> str:

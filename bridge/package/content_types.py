@@ -62,11 +62,7 @@ def _key(element: etree._Element) -> str:
 
 
 def override(root: etree._Element, part: str, type_: str) -> None:
-    """State the type of `part`; an override it already has is left if it says the same."""
-    for element in root.iter(_OVERRIDE):
-        if _key(element) == part_key(part):
-            element.set("ContentType", type_)
-            return
+    """State the type of a part that has no override yet."""
     etree.SubElement(root, _OVERRIDE, {"PartName": f"/{part}", "ContentType": type_})
 
 

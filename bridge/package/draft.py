@@ -84,7 +84,8 @@ class Draft:
             )
         self._new[key] = member
         self._gone.discard(key)
-        if type_ and types.content_types(self._types).of(part) != type_:
+        # A type stated for the part itself stays, even an odd one.
+        if type_ and key not in self._overridden and types.content_types(self._types).of(part) != type_:
             types.override(self._types, part, type_)
             self._overridden.add(key)
 
@@ -109,6 +110,10 @@ class Draft:
         for name in (part, relationships_part(part)):
             self._drop(name)
             self._overridden.discard(part_key(name))
+
+    def forget_type(self, part: str) -> None:
+        """Take out what the content types say of this part itself."""
+        types.forget(self._types, part)
 
     def _drop(self, part: str) -> None:
         self._new.pop(part_key(part), None)

@@ -142,6 +142,8 @@ def _styles(amendment: Amendment, made: set[str]) -> tuple[str, Styles]:
     if root is None:
         made.add(mark.MADE_STYLES)
         root = styles.new_stylesheet(xml.namespace(amendment.workbook))
+    elif part and amendment.package.types.of(part) != types.STYLES:
+        made.add(mark.MADE_STYLES_TYPE)
     if part is None:
         made.add(mark.MADE_STYLES_RELATION)
         part = amendment.draft.fresh(amendment.folder("styles{}.xml"))

@@ -27,6 +27,7 @@ SHEET, LAID, STATE = f"{PREFIX}sheet.", f"{PREFIX}laid.", f"{PREFIX}state."
 NAMES, STYLES, MADE = f"{PREFIX}names", f"{PREFIX}styles", f"{PREFIX}made"
 # What `_savefit.made` may list: things the workbook lacked before our first graft.
 MADE_NAMES, MADE_STYLES, MADE_STYLES_RELATION = "names", "styles", "styles-relation"
+MADE_STYLES_TYPE = "styles-type"
 
 # A literal in a formula may hold 255 characters, the whole formula 8,192 (Excel's published limits).
 _LITERAL, _FORMULA = 200, 7600

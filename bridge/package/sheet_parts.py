@@ -12,13 +12,13 @@ from bridge.package.relationships import Relationship
 from bridge.package.styles import Styles
 from bridge.package.user_objects import Standing
 from bridge.package.worksheet import stated_width, worksheet
-from bridge.page.cells import quoted, reference
+from bridge.page.cells import column_letters, quoted, reference
 from bridge.page.sheet import Sheet
 
 _DRAWING_TYPE = f"{xml.OFFICE_RELS}/drawing"
 _CHART_TYPE = f"{xml.OFFICE_RELS}/chart"
 # From this many cells on a part is deflated faster and comes out a little larger.
-_LONG, _FAST, _TIGHT = 100_000, 3, 6
+_LONG, _FAST, _TIGHT = 50_000, 1, 6
 
 
 def write_sheet(amendment: Amendment, sheet: Sheet, part: str, styles: Styles, found: Standing) -> None:
@@ -105,7 +105,11 @@ def _print_area(sheet: Sheet, tab: str) -> str:
 
 
 def _print_titles(sheet: Sheet, tab: str) -> str:
-    if sheet.print_titles is None:
-        return ""
-    first, last = sheet.print_titles
-    return f"{quoted(tab)}!${first + 1}:${last + 1}"
+    parts = []
+    if sheet.title_columns is not None:
+        first, last = sheet.title_columns
+        parts.append(f"{quoted(tab)}!${column_letters(first)}:${column_letters(last)}")
+    if sheet.print_titles is not None:
+        first, last = sheet.print_titles
+        parts.append(f"{quoted(tab)}!${first + 1}:${last + 1}")
+    return ",".join(parts)

@@ -5,11 +5,9 @@ from __future__ import annotations
 import re
 from collections.abc import Iterator
 
-from bridge.messages import FileRefused
-from bridge.package import content_types as types
 from bridge.package import mark, names, our_names, relationships, styles
 from bridge.package.amendment import Amendment
-from bridge.package.archive import Member, part_key, unpacked
+from bridge.package.archive import Member, part_key, readable
 from bridge.package.package import Package
 from bridge.package.relationships import Relationship
 
@@ -42,13 +40,15 @@ def _restore_styles(amendment: Amendment, made: set[str]) -> None:
     if relation is None or relation.part is None or root is None:
         return
     record = mark.texts(package.defined_names, mark.STYLES).get("", "")
-    before = styles.base(root, record)
-    if before is None or _used(package, before):
+    ours = styles.ours(root, record)
+    if ours is None or _used(package, ours):
         return
     if mark.MADE_STYLES in made:
         _drop_styles(amendment, relation, mark.MADE_STYLES_RELATION in made)
     else:
-        amendment.draft.write_xml(relation.part, styles.restored(root, before), types.STYLES)
+        amendment.draft.write_xml(relation.part, styles.restored(root, ours))
+        if mark.MADE_STYLES_TYPE in made:
+            amendment.draft.forget_type(relation.part)
 
 
 def _drop_styles(amendment: Amendment, relation: Relationship, relation_too: bool) -> None:
@@ -65,23 +65,23 @@ _FORMAT_USES = re.compile(rb"""\s(?:s|style)\s*=\s*["'](\d{1,6})["']""")
 _HIGHLIGHT_USES = re.compile(rb"""\s(?:\w*[dD]xfId)\s*=\s*["'](\d{1,6})["']""")
 
 
-def _used(package: Package, before: styles.Base) -> bool:
-    """Whether a sheet, table or pivot table of the user's uses a format that is ours (or cannot be asked)."""
-    try:
-        return any(_uses(package, member, is_sheet, before) for member, is_sheet in _users_members(package))
-    except FileRefused:  # a damaged sheet of the user's: it stays as it is, and so do the styles
-        return True
+def _used(package: Package, ours: styles.Ours) -> bool:
+    """Whether a sheet, table or pivot table of the user's uses a format that is ours.
+
+    What of a damaged part can be read is looked at; an index beyond all lists, which broken files have, is no use.
+    """
+    return any(_uses(member, is_sheet, ours) for member, is_sheet in _users_members(package))
 
 
-def _uses(package: Package, member: Member, is_sheet: bool, before: styles.Base) -> bool:
+def _uses(member: Member, is_sheet: bool, ours: styles.Ours) -> bool:
     seam = b""
-    for piece in unpacked(member, package.limits.member):
+    for piece in readable(member):
         text = seam + piece
         if b"\0" in text:  # UTF-16: not worth a second reader; the styles stay
             return True
-        if is_sheet and any(int(number) >= before.formats for number in set(_FORMAT_USES.findall(text))):
+        if is_sheet and any(int(number) in ours.formats for number in set(_FORMAT_USES.findall(text))):
             return True
-        if any(int(number) >= before.highlights for number in set(_HIGHLIGHT_USES.findall(text))):
+        if any(int(number) in ours.highlights for number in set(_HIGHLIGHT_USES.findall(text))):
             return True
         seam = text[-32:]
     return False

@@ -148,7 +148,7 @@ class Styles:
     def __init__(self, root: etree._Element, earlier: str = "") -> None:
         self.root = root
         self._lists = {name: _List(root, name) for name in _COUNTED}
-        sound = base(root, earlier)
+        sound = ours(root, earlier)
         self.before = sound.lengths if sound else {name: each.length for name, each in self._lists.items()}
         self._xfs: dict[Format, int] = {}
         self._dxfs: dict[Format, int] = {}
@@ -264,7 +264,7 @@ class Styles:
         return 7 / digit_width(items[int(font)])
 
     def record(self) -> str:
-        """What `base` needs to tell our items from the user's."""
+        """What `ours` needs to tell our items from the user's."""
         counts = ",".join(f"{name}={self.before[name]}" for name in _COUNTED)
         return f"{counts},sum={_checksum(self.root, self.before)}"
 
@@ -363,48 +363,48 @@ def _dxf(format_: Format) -> str:
 
 
 @dataclass(frozen=True, slots=True)
-class Base:
-    """How long the lists were before the bridge added anything; -1: the list was not there."""
+class Ours:
+    """Which items are ours: `lengths` are the lists' before the bridge added anything (-1: the list was not there).
+
+    `formats` and `highlights` are the indexes of our cell formats and differential formats.
+    """
 
     lengths: dict[str, int]
-
-    @property
-    def formats(self) -> int:
-        """The first cell format that is ours."""
-        return max(0, self.lengths["cellXfs"])
-
-    @property
-    def highlights(self) -> int:
-        """The first differential format that is ours."""
-        return max(0, self.lengths["dxfs"])
+    formats: range
+    highlights: range
 
 
-def base(root: etree._Element, record: str) -> Base | None:
-    """The lists' lengths before our first graft, if `root` still is as our last graft left it; else None.
+def ours(root: etree._Element, record: str) -> Ours | None:
+    """Which items are ours, if `root` still is as our last graft left it; else None.
 
     Another program that saves the workbook writes its styles anew; then ours cannot be told from the user's.
     """
     lengths = _parsed(record)
     if lengths is None or not record.endswith(f"sum={_checksum(root, lengths)}"):
         return None
-    return Base(lengths)
+    formats, highlights = _List(root, "cellXfs"), _List(root, "dxfs")
+    return Ours(
+        lengths,
+        range(max(0, lengths["cellXfs"]), len(formats.items)),
+        range(max(0, lengths["dxfs"]), len(highlights.items)),
+    )
 
 
-def restored(root: etree._Element, before: Base) -> etree._Element:
+def restored(root: etree._Element, added: Ours) -> etree._Element:
     """A copy of the stylesheet without the items the bridge added."""
     root = copy.deepcopy(root)
-    for name, length in before.lengths.items():
+    for name, length in added.lengths.items():
         holder = child(root, name)
         if holder is None:
             continue
         if length < 0:
             remove_element(holder)
             continue
-        added = len(list(_items(holder))) - length
+        extra = len(list(_items(holder))) - length
         elements = list(children_of_any(holder))
-        for item in elements[len(elements) - added :]:
+        for item in elements[len(elements) - extra :]:
             remove_element(item)
-        _count_by(holder, -added)
+        _count_by(holder, -extra)
     return root
 
 

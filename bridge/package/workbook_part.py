@@ -70,8 +70,8 @@ def remove_sheet(workbook: etree._Element, relation: str) -> None:
     left = sheet_elements(workbook)
     neighbour = _visible_near(left, position)
     for view in _views(workbook):
-        _shift(view, "activeTab", position, neighbour)
-        _shift(view, "firstSheet", position, neighbour)
+        for name in ("activeTab", "firstSheet"):
+            _shift(view, name, position, neighbour, len(left))
     for view in _custom_views(workbook):
         if view.get("activeSheetId") == gone.get("sheetId") and left:
             view.set("activeSheetId", left[neighbour].get("sheetId", ""))
@@ -82,9 +82,10 @@ def _views(workbook: etree._Element) -> list[etree._Element]:
     return [] if holder is None else list(children(holder, "workbookView"))
 
 
-def _shift(view: etree._Element, name: str, removed: int, neighbour: int) -> None:
+def _shift(view: etree._Element, name: str, removed: int, neighbour: int, last: int) -> None:
+    """Mend a position after a removal; one that pointed at no sheet (beyond `last`) stays as it was."""
     text = view.get(name, "")
-    if not re.fullmatch(r"\d{1,9}", text) or int(text) < removed:
+    if not re.fullmatch(r"\d{1,9}", text) or not removed <= int(text) <= last:
         return
     view.set(name, str(neighbour if int(text) == removed else int(text) - 1))
 

@@ -188,8 +188,8 @@ def _link(link: Link) -> str:
 
 def _page_setup(sheet: Sheet, kept: Kept) -> str:
     paper = f' paperSize="{kept.paper}"' if kept.paper else ""
-    orientation = "landscape" if sheet.landscape else "portrait"
-    return f'<pageSetup{paper} fitToWidth="{sheet.fit_width}" fitToHeight="{sheet.fit_height}" orientation="{orientation}"/>'
+    fit = f'fitToWidth="{sheet.fit_width}" fitToHeight="{sheet.fit_height}"'
+    return f'<pageSetup{paper} {fit} orientation="{"landscape" if sheet.landscape else "portrait"}"/>'
 
 
 def _no_false_alarms(sheet: Sheet) -> str:
