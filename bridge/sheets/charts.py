@@ -17,7 +17,7 @@ from bridge.page.cells import reference
 from bridge.page.charts import Axis, Chart, Series
 from bridge.regression.results import ModelResult
 from bridge.regression.spec import NumberTerm
-from bridge.sheets import axes, lines, remarks, rows, style, words
+from bridge.sheets import axes, lines, measure, remarks, rows, style, words
 from bridge.sheets.behind import Behind, Points
 from bridge.sheets.book import Book, ModelSheet
 from bridge.workbook.tables import Kind, Table
@@ -25,6 +25,8 @@ from bridge.workbook.tables import Kind, Table
 MOST_POINTS = 2000
 MOST_NAMED = 8
 MOST_COEFFICIENTS = 30
+_LINE, _TALL_LINE = 19, 32  # pixels a coefficient; names that some programs break into lines need more
+_LONG_NAME = 80.0  # pixels
 WIDTH, HEIGHT = 340, 260
 
 Floats = NDArray[np.float64]
@@ -76,6 +78,7 @@ class _Cases:
         self.result: ModelResult = model.result
         self.table: Table = section.table
         self.name = model.name
+        self.said = model.name if model.name.casefold().startswith("model") else f"model {model.name}"
         self.area = area
         self._section, self._shared = section, shared
         self._sheet = book.title("fit rows")
@@ -170,7 +173,7 @@ def _observed(cases: _Cases) -> Picture:
     return Picture(
         "observed",
         _chart(
-            f"Observed against fitted, model {cases.name}",
+            f"Observed against fitted, {cases.said}",
             series,
             _titled(both, f"fitted {name}"),
             _titled(both, f"observed {name}"),
@@ -200,7 +203,7 @@ def _order(cases: _Cases, column: str) -> Picture:
 
 def _residuals(cases: _Cases, against: str, x: Points, y: Points, axis: Axis) -> Chart:
     labels = cases.labels(remarks.marks(cases.result).large)
-    title = axes.shortened(f"Residuals against {against}, model {cases.name}", 60)
+    title = axes.shortened(f"Residuals against {against}, {cases.said}", 60)
     return _chart(title, (_cloud("rows", x, y, labels),), axis, axes.even("studentised residual", y.values, 2.5))
 
 
@@ -221,7 +224,7 @@ def _normal(cases: _Cases) -> Picture | None:
     series = (_cloud("rows", x, y), _rule("exactly normal", ends, ends))
     x_axis = axes.even("normal quantile", x.values, 2.0)
     y_axis = axes.even("studentised residual, sorted", y.values, 2.5)
-    return Picture("normal", _chart(f"Normal plot of the residuals, model {cases.name}", series, x_axis, y_axis))
+    return Picture("normal", _chart(f"Normal plot of the residuals, {cases.said}", series, x_axis, y_axis))
 
 
 def _leverage(cases: _Cases) -> Picture:
@@ -230,7 +233,7 @@ def _leverage(cases: _Cases) -> Picture:
     labels = cases.labels(marked.large | marked.pulls | marked.far | marked.alone)
     largest = max((value for value in x.values if value is not None), default=0.0)
     x_axis = axes.axis("leverage", (0.0, largest))
-    title = f"Leverage and residual, model {cases.name}"
+    title = f"Leverage and residual, {cases.said}"
     y_axis = axes.even("studentised residual", y.values, 2.5)
     return Picture("leverage", _chart(title, (_cloud("rows", x, y, labels),), x_axis, y_axis))
 
@@ -244,7 +247,9 @@ def _coefficients(cases: _Cases) -> Picture | None:
     shown = sorted(sized[:MOST_COEFFICIENTS])
     scale = fit.standardised[shown] / fit.coefficients[shown]
     low, high = fit.low[shown] * scale, fit.high[shown] * scale
-    names = tuple(words.label_in(cases.table, cases.result.design.columns[at].label) for at in shown)
+    labels = [words.label_in(cases.table, cases.result.design.columns[at].label) for at in shown]
+    names = tuple(axes.shortened(label, 30) for label in labels)
+    line = _TALL_LINE if max(measure.pixels(name, 8.0) for name in names) > _LONG_NAME else _LINE
     height = np.arange(len(shown), 0, -1, dtype=float)
     series = _interval_series(cases, fit.standardised[shown], low, high, height, names)
     span_low, span_high = float(np.minimum(low, high).min()), float(np.maximum(low, high).max())
@@ -253,8 +258,8 @@ def _coefficients(cases: _Cases) -> Picture | None:
     y_axis = Axis("", minimum=0.0, maximum=len(shown) + 1.0, gridlines=False, hidden_labels=True)
     level = f"{100 * cases.result.spec.level:g}%"
     more = "" if len(shown) == len(sized) else f", the {len(shown)} largest of {len(sized)}"
-    title = f"Coefficients, {level} intervals, model {cases.name}{more}"
-    return Picture("coefficients", _chart(title, series, x_axis, y_axis, height=max(HEIGHT, 110 + 19 * len(shown))))
+    title = f"Coefficients, {level} intervals, {cases.said}{more}"
+    return Picture("coefficients", _chart(title, series, x_axis, y_axis, height=max(HEIGHT, 110 + line * len(shown))))
 
 
 def _interval_series(
@@ -312,7 +317,7 @@ def _line(cases: _Cases) -> Picture | None:
     response = words.axis_title(cases.table, cases.result.spec.response)
     x_axis = axes.axis(words.axis_title(cases.table, term.column), x.values)
     y_axis = axes.axis(response, [value for one in series for value in one.y])
-    title = f"Fitted line with {level} bands, model {cases.name}"
+    title = f"Fitted line with {level} bands, {cases.said}"
     return Picture("line", _chart(axes.shortened(title, 80), tuple(series), x_axis, y_axis))
 
 

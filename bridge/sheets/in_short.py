@@ -62,7 +62,9 @@ def _phrase(model: ModelSheet, result: ModelResult, term: str) -> str:
 def _level(model: ModelSheet, result: ModelResult, columns: list[tuple[int, DesignColumn]]) -> str:
     at, column = max(columns, key=lambda one: abs(float(result.fit.t[one[0]])))
     factor = column.factors[0]
-    base = dict(result.design.bases).get(factor.column, "the base level")
+    base = dict(result.design.bases)[factor.column]
+    if any(one.factors[0].level == base for _, one in columns):
+        return ""  # without an intercept every level has its own mean
     name = words.name_in(model.table, factor.column)
     change = _change(model, result, float(result.fit.coefficients[at]))
     return f"{name} {factor.level} instead of {base} {GOES} {change}"

@@ -14,9 +14,10 @@ from numpy.typing import NDArray
 
 from bridge.page.cells import Format, column_letters, quoted
 from bridge.page.sheet import Block, BlockColumn, Sheet
+from bridge.regression.estimates import mean_in_units
 from bridge.regression.results import ModelResult
 from bridge.regression.spec import Shape
-from bridge.sheets import back, figures, measure, remarks, style, words
+from bridge.sheets import figures, measure, remarks, style, words
 from bridge.sheets.book import Book, ModelSheet
 from bridge.sheets.paper import Paper
 from bridge.sheets.top import ROWS
@@ -305,7 +306,7 @@ def case_values(result: ModelResult, key: str) -> Floats:
         "huber": fit.robust_weights,
     }
     if key == "fitted":
-        return back.mean(fit.fitted, result.back)
+        return mean_in_units(fit.fitted, result.back)
     found = values[key]
     assert found is not None  # the column is there only where the fit has weights
     return found

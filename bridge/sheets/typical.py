@@ -4,8 +4,11 @@ from __future__ import annotations
 
 import math
 
+import numpy as np
+from numpy.typing import NDArray
+
 from bridge.regression.results import ModelResult
-from bridge.regression.spec import CategoryTerm
+from bridge.regression.spec import CategoryTerm, Levels, Observations
 from bridge.sheets import figures, lines, words
 from bridge.sheets.book import ModelSheet
 
@@ -26,7 +29,7 @@ def case(model: ModelSheet, result: ModelResult) -> str | None:
     }
     if {term.column for term in result.spec.terms} - set(means) - set(common):
         return None
-    made = lines.one(result, means, common)
+    made = lines.in_units(result, _observed(means, common))
     estimate = float(made.estimate[0])
     if not math.isfinite(estimate):
         return None
@@ -41,6 +44,12 @@ def case(model: ModelSheet, result: ModelResult) -> str | None:
     if not math.isfinite(float(made.case_low[0])):
         return f"{text}."
     return f"{text}; {round(100 * result.spec.level)} of 100 such cases should lie between {ends[0]} and {ends[1]}."
+
+
+def _observed(means: dict[str, float], levels: dict[str, str]) -> Observations:
+    columns: dict[str, NDArray[np.float64] | Levels] = {name: np.array([value]) for name, value in means.items()}
+    columns |= {name: Levels(np.array([0]), (level,)) for name, level in levels.items()}
+    return Observations(columns, 1)
 
 
 def _number(model: ModelSheet, column: str, value: float) -> str:

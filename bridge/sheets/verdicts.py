@@ -6,8 +6,9 @@ import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 
+from bridge.regression.design import term_name
 from bridge.regression.results import ModelResult, Nested
-from bridge.regression.spec import NumberTerm, Shape
+from bridge.regression.spec import CategoryTerm, NumberTerm, Shape
 from bridge.sheets import figures, in_short, readings, typical, words
 from bridge.sheets.book import Book, ModelSheet
 
@@ -174,12 +175,12 @@ def _few_rows(result: ModelResult) -> list[_Concern]:
 
 def _entangled(model: ModelSheet, result: ModelResult) -> list[_Concern]:
     # powers and products of one column are near-dependent by their making: nobody needs to act on that
-    own = {term.column for term in result.spec.terms if not isinstance(term, NumberTerm) or _plain(term)}
     crossed = {name for term in result.spec.crossed for name in (term.first, term.second)}
+    own = {term_name(term) for term in result.spec.terms if _plain(term) and term.column not in crossed}
     names = [
         words.label_in(model.table, term.term)
         for term in result.collinearity.terms
-        if term.term in own - crossed and readings.vif(term)[1] == 2
+        if term.term in own and readings.vif(term)[1] == 2
     ]
     if not names:
         return []
@@ -191,8 +192,8 @@ def _entangled(model: ModelSheet, result: ModelResult) -> list[_Concern]:
     return [_Concern(text, 1)]
 
 
-def _plain(term: NumberTerm) -> bool:
-    return term.degree == 1 and not term.bends
+def _plain(term: NumberTerm | CategoryTerm) -> bool:
+    return not isinstance(term, NumberTerm) or (term.degree == 1 and not term.bends)
 
 
 def _digits(result: ModelResult) -> list[_Concern]:
