@@ -1,0 +1,62 @@
+"""Which models are contained in which, found from what their columns span, and the partial F of what comes on top."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+
+import numpy as np
+from numpy.typing import NDArray
+
+from bridge.regression.results import ModelResult, Nested
+from bridge.regression.spec import FitBy
+from bridge.regression.tails import f_upper
+
+SPANNED = 1e-9  # a column's distance from another model's columns, over its length, below which it is among them
+
+Array = NDArray[np.float64]
+
+
+def compare(results: Mapping[str, ModelResult]) -> tuple[Nested, ...]:
+    """Every pair in which the smaller model's columns are combinations of the larger's, in the order of the models.
+
+    Both must be least squares fits of the same response (and shape, and weights) on the same rows.
+    """
+    found = []
+    for small, a in results.items():
+        for large, b in results.items():
+            if small != large and _comparable(a, b) and _spans(a, b):
+                found.append(_partial_f(small, a, large, b))
+    return tuple(found)
+
+
+def _comparable(a: ModelResult, b: ModelResult) -> bool:
+    same = a.spec.response == b.spec.response and a.spec.response_shape is b.spec.response_shape
+    plain = a.spec.fit_by is b.spec.fit_by is FitBy.LEAST_SQUARES
+    larger = b.fit.df_residual < a.fit.df_residual
+    if not (same and plain and larger and a.fit.n == b.fit.n):
+        return False
+    weights = (a.fit.weights is None) == (b.fit.weights is None)
+    if weights and a.fit.weights is not None and b.fit.weights is not None:
+        weights = np.array_equal(a.fit.weights, b.fit.weights)
+    return weights and np.array_equal(a.observed, b.observed)
+
+
+def _spans(a: ModelResult, b: ModelResult) -> bool:
+    known = {column.label for column in b.design.columns}
+    others = [j for j, column in enumerate(a.design.columns) if column.label not in known]
+    if not others:
+        return True
+    weight = np.ones(b.fit.n) if b.fit.weights is None else np.sqrt(b.fit.weights)
+    q, _ = np.linalg.qr(b.design.matrix * weight[:, None] / np.abs(b.design.matrix).max(axis=0))
+    x = a.design.matrix[:, others] * weight[:, None]
+    rest = x - q @ (q.T @ x)
+    rest -= q @ (q.T @ rest)
+    return bool((np.linalg.norm(rest, axis=0) <= SPANNED * np.linalg.norm(x, axis=0)).all())
+
+
+def _partial_f(small: str, a: ModelResult, large: str, b: ModelResult) -> Nested:
+    df, rest = a.fit.df_residual - b.fit.df_residual, b.fit.df_residual
+    gained = max(a.fit.ss_residual - b.fit.ss_residual, 0.0) / df
+    error = b.fit.ss_residual / rest
+    f = gained / error if error > 0 else (float("inf") if gained > 0 else float("nan"))
+    return Nested(small, large, f, df, rest, f_upper(f, (df, rest)))
