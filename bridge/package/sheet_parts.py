@@ -101,7 +101,8 @@ def print_names(sheet: Sheet, tab: str, found: Standing) -> tuple[Name, ...]:
 
 
 def _print_area(sheet: Sheet, tab: str) -> str:
-    return reference(tab, *sheet.print_area) if sheet.print_area else ""
+    areas = (sheet.print_area, *sheet.more_print_areas) if sheet.print_area else ()
+    return ",".join(reference(tab, *area) for area in areas if area)
 
 
 def _print_titles(sheet: Sheet, tab: str) -> str:

@@ -88,11 +88,11 @@ class Sheet:
     """One of our sheets.
 
     `widths` are in characters of the default font, `heights` in points; both zero-based.
-    `freeze` is the first unfrozen (row, column). `print_titles` is (first, last) row repeated on each page.
-    `print_area` is (first, last) position. `hidden_columns`/`hidden_rows` are helper cells nobody needs to see.
-    `fit_width` and `fit_height` are pages to print on, 0 means as many as needed. `title_columns` is (first, last)
-    column repeated on each page. `name` is our name for the sheet (`fit rows`); `title` is what its
-    tab says where the user renamed it (empty: the same).
+    `freeze` is the first unfrozen (row, column). `print_titles` is (first, last) row repeated on each page,
+    `title_columns` (first, last) column. `print_area` is (first, last) position, `more_print_areas` further ones;
+    each begins a new page. `fit_width` and `fit_height` are pages to print on, 0 means as many as needed.
+    `hidden_columns`/`hidden_rows` are helper cells nobody needs to see. `name` is our name for the sheet
+    (`fit rows`); `title` is what its tab says where the user renamed it (empty: the same).
     """
 
     name: str
@@ -110,6 +110,7 @@ class Sheet:
     print_titles: tuple[int, int] | None = None
     print_area: tuple[tuple[int, int], tuple[int, int]] | None = None
     title_columns: tuple[int, int] | None = None
+    more_print_areas: tuple[tuple[tuple[int, int], tuple[int, int]], ...] = ()
     landscape: bool = True
     fit_width: int = 1
     fit_height: int = 0

@@ -11,11 +11,12 @@ from bridge.regression.results import AnovaRow, ModelResult
 from bridge.regression.spec import Errors
 from bridge.sheets import figures, style, words
 from bridge.sheets.book import Book, ModelSheet
-from bridge.sheets.paper import Paper
+from bridge.sheets.paper import ROW_POINTS, Paper
 
 HEADERS = ("source of variation", "degrees of freedom", "sum of squares", "mean square", "F", "p")
 _WIDTHS = {0: 38.0, 1: 12.0, 2: 18.0, 3: 18.0, 4: 13.0, 5: 12.0}
 _LAST = len(HEADERS) - 1
+_PAGE_POINTS = 870.0  # what an upright A4 page holds at this width
 _BLOCKS = {
     "added last": "added last (each term given all others)",
     "added in order": "added in order (each term given those above it)",
@@ -47,9 +48,9 @@ def _laid_out(book: Book) -> tuple[Sheet, dict[str, Span]]:
             paper.paragraph(words.refusal(model), 0, _LAST)
             paper.gap()
     sheet = paper.sheet(
+        _LAST,
         title=book.title("fit ANOVA"),
         freeze=(4, 0),
-        print_area=((0, 0), (max(paper.row - 1, 4), _LAST)),
         tab_color=style.TAB_DETAIL,
         landscape=False,
     )
@@ -58,6 +59,8 @@ def _laid_out(book: Book) -> tuple[Sheet, dict[str, Span]]:
 
 def _block(paper: Paper, model: ModelSheet, result: ModelResult) -> Span:
     response = words.axis_title(model.table, result.spec.response, result.spec.response_shape)
+    lines = len(result.anova.rows) + 8  # heading, headers, parts, notes
+    paper.room(min(lines * ROW_POINTS, _PAGE_POINTS), _PAGE_POINTS)
     paper.heading(f"{model.name}  {response}, {words.form(result.spec)}")
     first = paper.row
     head = replace(style.HEADER, wrap=True)

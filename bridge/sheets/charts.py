@@ -25,7 +25,7 @@ from bridge.workbook.tables import Kind, Table
 MOST_POINTS = 2000
 MOST_NAMED = 8
 MOST_COEFFICIENTS = 30
-_LINE, _TALL_LINE = 19, 32  # pixels a coefficient; names that some programs break into lines need more
+_LINE, _TALL_LINE = 19, 42  # pixels a coefficient; names that some programs break into lines need more
 _LONG_NAME = 80.0  # pixels
 WIDTH, HEIGHT = 340, 260
 

@@ -20,6 +20,7 @@ from bridge.sheets.paper import ROW_POINTS, Paper
 _WIDTHS = {0: 21.0, 1: 31.0, 2: 10.0, 3: 10.5, 4: 12.0, 5: 10.0, 6: 10.0, 7: 54.0, 8: 3.0}
 _LAST = 7
 _CHART_COLUMNS = (0, 2, 7)
+_PAGE_POINTS = 560.0  # what a landscape A4 page holds at this width
 _MOST_ROWS = 8
 _MOST_INDEXES = 5
 _MOST_SUBSETS = 10
@@ -41,7 +42,9 @@ def lay_out(book: Book) -> Sheet:
     _examined(paper, book)
     contents = _contents(paper, book)
     starts: dict[str, int] = {}
-    for model, result in book.fitted:
+    for at, (model, result) in enumerate(book.fitted):
+        if at:
+            paper.new_page()
         starts[model.name] = paper.row
         _model(paper, book, model, result, gallery.pictures.get(model.name, ()))
     for model in book.models:
@@ -51,12 +54,11 @@ def lay_out(book: Book) -> Sheet:
             paper.paragraph(words.refusal(model), 0, _LAST)
             paper.gap()
     _link_contents(paper, book, contents, starts)
-    last = max(paper.row - 1, 5)
     behind.put_down(paper, gallery.columns)
     return paper.sheet(
+        _LAST,
         title=book.title("fit diagnostics"),
         freeze=(3, 0),
-        print_area=((0, 0), (last, _LAST)),
         tab_color=style.TAB_DETAIL,
     )
 
@@ -282,10 +284,11 @@ def _search(paper: Paper, model: ModelSheet, result: ModelResult) -> None:
 def _charts(paper: Paper, pictures: Sequence[Chart]) -> None:
     for start in range(0, len(pictures), len(_CHART_COLUMNS)):
         row = pictures[start : start + len(_CHART_COLUMNS)]
+        tallest = max(chart.height for chart in row) * 72 / 96
+        paper.room(tallest, _PAGE_POINTS)
         for column, chart in zip(_CHART_COLUMNS, row, strict=False):
             paper.charts.append(replace(chart, row=paper.row, column=column))
-        tallest = max(chart.height for chart in row)
-        paper.row += math.ceil(tallest * 72 / 96 / ROW_POINTS) + 1
+        paper.row += math.ceil(tallest / ROW_POINTS) + 1
 
 
 # --- lines of a table ---------------------------------------------------------------------------

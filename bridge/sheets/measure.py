@@ -49,11 +49,6 @@ def pixels(text: str, size: float = 10.0, bold: bool = False) -> float:
     return total / 1000 * size * 96 / 72 * (1.07 if bold else 1.0)
 
 
-def column_pixels(width: float) -> float:
-    """How wide a column of `width` column units is, in pixels."""
-    return width * UNIT_PIXELS + PADDING_PIXELS
-
-
 def units(text: str, size: float = 10.0, bold: bool = False) -> float:
     """The column width, in column units, that shows the text whole; the widest line counts."""
     widest = max((pixels(line, size, bold) for line in text.split("\n")), default=0.0)

@@ -19,7 +19,8 @@ ROW_POINTS = 15.0
 class Paper:
     """Cells, merges, heights and charts as they are put down; `row` is the next free row.
 
-    `widths` (column units, zero-based columns) are known from the start: heights follow from them.
+    `widths` (column units, zero-based columns) are known from the start: heights follow from them. `pages` are the
+    rows that begin a printed page of their own.
     """
 
     name: str
@@ -31,6 +32,7 @@ class Paper:
     heights: dict[int, float] = field(default_factory=dict)
     links: list[Link] = field(default_factory=list)
     charts: list[Chart] = field(default_factory=list)
+    pages: list[int] = field(default_factory=lambda: [0])
 
     def top(self, book: Book, title: str, what: str, last: int) -> None:
         """The lines that every sheet begins with, across the columns up to `last`; the next free row comes after."""
@@ -109,9 +111,23 @@ class Paper:
         """Height of the rows `first` to `last` (not included) in points."""
         return sum(self.heights.get(row, ROW_POINTS) for row in range(first, last))
 
-    def sheet(self, **rest: Any) -> Sheet:
-        """The finished sheet; `rest` are further fields of `Sheet`."""
+    def new_page(self) -> None:
+        """What follows is printed on a page of its own."""
+        if self.row not in self.pages:
+            self.pages.append(self.row)
+
+    def room(self, points: float, page: float) -> None:
+        """Begin a new page where `points` more would not go on one of `page` points."""
+        if self.points(self.pages[-1], self.row) + points > page:
+            self.new_page()
+
+    def sheet(self, last_column: int, **rest: Any) -> Sheet:
+        """The finished sheet, printed as far as `last_column`, page by page; `rest` are further fields of `Sheet`."""
+        ends = [row - 1 for row in self.pages[1:]] + [max(self.row - 1, self.pages[-1])]
+        area, *more = (((first, 0), (last, last_column)) for first, last in zip(self.pages, ends, strict=True))
         return Sheet(
+            print_area=area,
+            more_print_areas=tuple(more),
             name=self.name,
             cells=self.cells,
             blocks=tuple(self.blocks),

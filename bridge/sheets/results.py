@@ -20,7 +20,6 @@ _LAST = MODELS_A_PAGE  # the label's column, then one a model
 _GAP, _CHARTS = MODELS_A_PAGE + 1, MODELS_A_PAGE + 2
 _CHART_WIDTH, _CHART_HEIGHT = 440, 270
 _CHART_COLUMNS = 6
-_LEAST_PAGE = 660.0  # points: a page of this height is as wide as an A4 page needs, whatever the default font
 
 MORE = (
     ("fit coefficients", "coefficients"),
@@ -41,46 +40,27 @@ LIVE = (
 def lay_out(book: Book) -> Sheet:
     """The sheet `fit results`."""
     groups = [book.models[at : at + MODELS_A_PAGE] for at in range(0, len(book.models), MODELS_A_PAGE)]
-    paper, starts, beside = _composed(book, groups, 0.0)
-    if len(groups) > 1:
-        # Pages of one height each, so that a page ends where a group of models does.
-        ends = [*starts[1:], paper.row]
-        heights = [paper.points(start, end) for start, end in zip([0, *starts[1:]], ends, strict=True)]
-        paper, _, beside = _composed(book, groups, max(_LEAST_PAGE, paper.points(0, beside), *heights))
-    return paper.sheet(
-        title=book.title("fit results"),
-        freeze=(3, 0),
-        print_area=((0, 0), (paper.row - 1, _CHARTS + _CHART_COLUMNS - 1 if beside else _LAST)),
-        fit_height=max(1, len(groups)),
-        tab_color=style.TAB_RESULT,
-    )
-
-
-def _composed(book: Book, groups: Sequence[Sequence[ModelSheet]], page: float) -> tuple[Paper, list[int], int]:
-    """The page put down, each group on `page` points; where groups start, and the row after what stands beside."""
-    wide = 10.0 if len(groups) <= 1 else 8.0
     widths = {0: _LABEL, **dict.fromkeys(range(1, _LAST + 1), _MODEL), _GAP: 2.5}
-    widths.update(dict.fromkeys(range(_CHARTS, _CHARTS + _CHART_COLUMNS), wide))
+    widths.update(dict.fromkeys(range(_CHARTS, _CHARTS + _CHART_COLUMNS), 10.0))
     paper = Paper("fit results", widths)
     paper.top(book, title(book), "What the models say, in a page.", _LAST)
     first = paper.row
-    starts = []
     for at, group in enumerate(groups):
-        _fill(paper, at * page)
-        starts.append(paper.row)
+        if at:
+            paper.new_page()
         _group(paper, book, group, verdicts.comparison(book) if at == 0 else [])
-    _nested(paper, book)
-    beside = _beside(paper, book, first) if book.fitted else 0
+        if at == len(groups) - 1:
+            _nested(paper, book)
+        if at == 0 and book.fitted:
+            _beside(paper, book, first)
     _more(paper, book)
-    return paper, starts, beside
-
-
-def _fill(paper: Paper, points: float) -> None:
-    """Empty rows until the next one begins `points` below the top of the sheet."""
-    missing = points - paper.points(0, paper.row)
-    while missing > 0:
-        paper.gap(min(missing, 400.0))
-        missing -= min(missing, 400.0)
+    return paper.sheet(
+        _CHARTS + _CHART_COLUMNS - 1 if book.fitted else _LAST,
+        title=book.title("fit results"),
+        freeze=(3, 0),
+        fit_height=max(1, len(groups)),
+        tab_color=style.TAB_RESULT,
+    )
 
 
 def title(book: Book) -> str:
@@ -252,23 +232,21 @@ def _more(paper: Paper, book: Book) -> None:
             paper.row += 1
 
 
-def _beside(paper: Paper, book: Book, row: int) -> int:
-    """Right of the words: two charts of the best model, then the cautions; the row after them."""
+def _beside(paper: Paper, book: Book, row: int) -> None:
+    """Right of the words: two charts of the best model, then the cautions."""
     last = _CHARTS + _CHART_COLUMNS - 1
     chosen = verdicts.best(book)
     gallery = charts.draw(book)
-    width = min(_CHART_WIDTH, round(0.97 * measure.column_pixels(paper.widths[last]) * _CHART_COLUMNS))
     for key in ("observed", "fitted"):
         chart = gallery.chart(chosen[0].name, key) if chosen is not None else None
         if chart is not None:
-            paper.charts.append(replace(chart, row=row, column=_CHARTS, width=width, height=_CHART_HEIGHT))
+            paper.charts.append(replace(chart, row=row, column=_CHARTS, width=_CHART_WIDTH, height=_CHART_HEIGHT))
             row = _row_below(paper, row, _CHART_HEIGHT * 72 / 96 + 8)
     paper.put(_CHARTS, "Before you rely on it", style.HEADING, row)
     paper.heights[row] = max(paper.heights.get(row, ROW_POINTS), style.HEADING.size * 1.6)
     live = LIVE.format(estimates=book.title("fit estimates"))
     end = paper.beside("\n\n".join((*words.CAUTIONS, live)), _CHARTS, last, row + 1)
     paper.row = max(paper.row, end)
-    return end
 
 
 def _row_below(paper: Paper, row: int, points: float) -> int:

@@ -92,14 +92,13 @@ def lay_out(book: Book) -> Sheet:
         _note(paper, section)
         _heads(paper, section, book)
         _lines(paper, section)
-    last = max((section.last_row for section in found), default=paper.row)
     across = max((_last_column(section) for section in found), default=8)
     return paper.sheet(
+        across,
         title=book.title("fit rows"),
         freeze=(found[0].first_row, 2) if found else None,
         print_titles=(found[0].header_row, found[0].header_row) if len(found) == 1 else None,
         title_columns=(0, 1) if found else None,
-        print_area=((0, 0), (last, across)),
         fit_width=max((len(section.models) for section in found), default=1),  # one column set a page
         tab_color=style.TAB_DETAIL,
     )
