@@ -151,6 +151,16 @@ class Package:
         assert entry is not None
         return tuple(self._tables_of(entry))
 
+    def shared_strings(self) -> bytes:
+        """The unpacked shared texts, bounded by `limits.member`; empty where the workbook has none.
+
+        Raises FileRefused if the part is damaged or unpacks to more than it says.
+        """
+        for relation in self.workbook_relationships:
+            if relation.kind == "sharedStrings" and relation.part and part_key(relation.part) in self.parts:
+                return content(self.parts[part_key(relation.part)], self.limits.member)
+        return b""
+
     def _tables_of(self, entry: SheetEntry) -> Iterable[TableEntry]:
         for relation in self.relationships(entry.part):
             if relation.kind == "table" and relation.part and part_key(relation.part) in self.parts:
