@@ -62,10 +62,11 @@ class _Growing:
     known: dict[str, str] = field(default_factory=dict)
 
 
-def gather(rows: Iterable[Sequence[object]], width: int) -> tuple[tuple[CellColumn, ...], Dates]:
-    """Columns of a sheet given row by row from row 1, column A; and the date cells met.
+def gather(rows: Iterable[Sequence[object]], first: int, width: int) -> tuple[tuple[CellColumn, ...], Dates]:
+    """Columns of a sheet from column A on, given its rows from row 1 on, and the date cells met.
 
-    The cell reader's empty text means that nothing can be seen in the cell.
+    `rows` have `width` cells each, the first of them in the zero-based column `first`. The cell reader's empty text
+    means that nothing can be seen in the cell.
     """
     growing = [_Growing() for _ in range(width)]
     sure: tuple[int, int] | None = None
@@ -77,11 +78,12 @@ def gather(rows: Iterable[Sequence[object]], width: int) -> tuple[tuple[CellColu
                 continue
             for row, cell in enumerate(cells, start):
                 if isinstance(cell, _DATE_TYPES) and not _is_sure(cell):
-                    unsure[(row, at)] = cell
+                    unsure[(row, first + at)] = cell
                 elif sure is None and isinstance(cell, date):
-                    sure = (row, at)
+                    sure = (row, first + at)
         start += len(batch)
-    return tuple(_column(one) for one in growing), Dates(sure, unsure)
+    empty = [CellColumn(np.full(start, _NAN), np.zeros(start, np.uint8), ()) for _ in range(first)]
+    return (*empty, *(_column(one) for one in growing)), Dates(sure, unsure)
 
 
 def _is_sure(cell: object) -> bool:

@@ -136,16 +136,14 @@ class _Book:
             reading = beside.submit(_guarded, lambda: self._reader.get_sheet_by_name(tab), tab)
             marks = _parsed(lambda: markup.scan(xml, self._empty_texts()), tab)
             sheet = reading.result()
-        end = sheet.end
-        if end is None:
-            return SheetCells(tab, (), np.empty(0, np.bool_))
-        columns, dates = typed.gather(sheet.iter_rows(), end[1] + 1)
-        merges = tuple(sheet.merged_cell_ranges or ())
+        rows = sheet.iter_rows() if sheet.start is not None else ()
+        columns, dates = typed.gather(rows, sheet.start[1] if sheet.start is not None else 0, sheet.width)
         date1904 = _set_serials(columns, dates, xml)
-        height = len(columns[0].state)
+        columns = _marked(_reaching(columns, marks.no_value), marks)
+        height = len(columns[0].state) if columns else 0
         hidden = np.zeros(height, np.bool_)
         hidden[marks.hidden[marks.hidden < height]] = True
-        return SheetCells(tab, _marked(columns, marks), hidden, merges, date1904)
+        return SheetCells(tab, columns, hidden, tuple(sheet.merged_cell_ranges or ()), date1904)
 
     def _raw(self, tab: str) -> RawSheet:
         """A sheet of ours cell by cell; error cells hold the error's text, dates their serials."""
@@ -153,8 +151,9 @@ class _Book:
         sheet = _guarded(lambda: self._reader.get_sheet_by_name(tab), tab)
         values: dict[tuple[int, int], Scalar] = {}
         dates = set()
-        for row, cells in enumerate(sheet.iter_rows() if sheet.end is not None else ()):
-            for column, value in enumerate(cells):
+        first = sheet.start[1] if sheet.start is not None else 0
+        for row, cells in enumerate(sheet.iter_rows() if sheet.start is not None else ()):
+            for column, value in enumerate(cells, first):
                 if isinstance(value, (str, float, int)):
                     values[(row, column)] = value
                 else:
@@ -255,6 +254,23 @@ def _set_serials(columns: Sequence[CellColumn], dates: typed.Dates, xml: bytes) 
 
 def _number(columns: Sequence[CellColumn], at: tuple[int, int]) -> float:
     return float(columns[at[1]].numbers[at[0]])
+
+
+def _reaching(columns: tuple[CellColumn, ...], places: NDArray[np.int64]) -> tuple[CellColumn, ...]:
+    """The columns, lengthened and added to so that they reach formulas without a value, which the reader skips."""
+    height = len(columns[0].state) if columns else 0
+    if not len(places) or (places[:, 0].max() < height and places[:, 1].max() < len(columns)):
+        return columns
+    height, width = max(height, int(places[:, 0].max()) + 1), max(len(columns), int(places[:, 1].max()) + 1)
+    blank = CellColumn(np.empty(0), np.empty(0, np.uint8), ())
+    return tuple(_lengthened(columns[at] if at < len(columns) else blank, height) for at in range(width))
+
+
+def _lengthened(column: CellColumn, height: int) -> CellColumn:
+    more = height - len(column.state)
+    numbers = np.concatenate([column.numbers, np.full(more, np.nan)])
+    state = np.concatenate([column.state, np.zeros(more, np.uint8)])
+    return CellColumn(numbers, state, (*column.texts, *[None] * more) if column.texts else ())
 
 
 def _marked(columns: Sequence[CellColumn], marks: markup.Markup) -> tuple[CellColumn, ...]:
