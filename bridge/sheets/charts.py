@@ -27,7 +27,8 @@ MOST_NAMED = 8
 MOST_COEFFICIENTS = 30
 _LINE, _TALL_LINE = 19, 42  # pixels a coefficient; names that some programs break into lines need more
 _LONG_NAME = 80.0  # pixels
-WIDTH, HEIGHT = 340, 260
+_FEW_VALUES = 12
+WIDTH, HEIGHT = 340, 216
 
 Floats = NDArray[np.float64]
 
@@ -190,7 +191,8 @@ def _fitted(cases: _Cases) -> Picture:
 
 def _against(cases: _Cases, column: str) -> Picture:
     x, y = cases.data(column), cases.case("internal")
-    axis = axes.axis(words.axis_title(cases.table, column), x.values, date=_is_date(cases.table, column))
+    shown = _with_air(x.values)
+    axis = axes.axis(words.axis_title(cases.table, column), shown, date=_is_date(cases.table, column))
     return Picture(f"against {column}", _residuals(cases, words.name_in(cases.table, column), x, y, axis))
 
 
@@ -340,6 +342,14 @@ def _titled(axis: Axis, title: str) -> Axis:
 def _chart(title: str, series: Sequence[Series], x_axis: Axis, y_axis: Axis, height: int = HEIGHT) -> Chart:
     alt = f"{title}. Across: {x_axis.title}. Up: {y_axis.title or 'one line per coefficient'}."
     return Chart(title, tuple(series), x_axis, y_axis, 0, 0, WIDTH, height, alt_text=alt)
+
+
+def _with_air(values: tuple[float | None, ...]) -> tuple[float | None, ...]:
+    """Few different values would stand on the frame: the reach is widened a little, so that the axis goes beyond."""
+    if len({value for value in values if value is not None}) > _FEW_VALUES:
+        return values
+    low, high = axes.reach(values)
+    return (low - 0.02 * (high - low), high + 0.02 * (high - low))
 
 
 def _is_date(table: Table, name: str) -> bool:
