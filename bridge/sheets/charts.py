@@ -196,8 +196,10 @@ def _against(cases: _Cases, column: str) -> Picture:
     return Picture(f"against {column}", _residuals(cases, words.name_in(cases.table, column), x, y, axis))
 
 
-def _order(cases: _Cases, column: str) -> Picture:
+def _order(cases: _Cases, column: str) -> Picture | None:
     x, y = cases.data(column), cases.case("internal")
+    if all(value is None for value in x.values):
+        return None  # an order told by texts has no axis
     axis = axes.axis(words.axis_title(cases.table, column), x.values, date=_is_date(cases.table, column))
     chart = _residuals(cases, f"order ({words.name_in(cases.table, column)})", x, y, axis)
     return Picture("order", chart)

@@ -107,12 +107,12 @@ def _normality(model: ModelSheet, result: ModelResult, check: Check) -> _Said:
 def _serial(model: ModelSheet, result: ModelResult, check: Check) -> _Said:
     order = _order_words(model, result)
     if check.p >= SIGN:
-        return _Said(f"No sign that neighbouring rows ({order}) resemble each other more than others.", 0)
+        return _Said(f"No sign that neighbouring rows{order} resemble each other more than others.", 0)
     alike = "resemble each other" if not check.estimate < 0 else "alternate"
     strength = "" if math.isnan(check.estimate) else f" (correlation {figures.sentence_number(check.estimate, 2)})"
     opening = "Clear signs" if check.p < CLEAR else "Some signs"
     return _Said(
-        f"{opening} that the residuals of neighbouring rows ({order}) {alike}{strength}; standard errors that ignore "
+        f"{opening} that the residuals of neighbouring rows{order} {alike}{strength}; standard errors that ignore "
         f"this are too small or too large.{_serial_advice(result)}",
         _serial_weight(result, check.p),
     )
@@ -173,7 +173,7 @@ def _outlier(model: ModelSheet, result: ModelResult) -> Reading:
     value, p = float(influence.external[at]), influence.outlier_p
     row = row_words(model, at)
     if math.isnan(p):
-        said = _Said("Not available: too few rows.", 0)
+        said = _Said("Not available for this fit.", 0)
     elif p < SIGN:
         side = "above" if value > 0 else "below"
         said = _Said(
@@ -269,8 +269,8 @@ def _spread_advice(result: ModelResult) -> str:
 
 def _order_words(model: ModelSheet, result: ModelResult) -> str:
     if result.spec.order is None:
-        return "as they stand on the sheet"
-    return f"in the order of {words.name_in(model.table, result.spec.order)}"
+        return ""  # the check's own note says in which order they stand
+    return f" (in the order of {words.name_in(model.table, result.spec.order)})"
 
 
 def _serial_weight(result: ModelResult, p: float) -> int:

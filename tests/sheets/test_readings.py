@@ -68,7 +68,8 @@ def test_standard_errors_that_allow_for_it_are_named_instead_of_advised():
 
 def test_the_order_column_is_named():
     assert "in the order of month" in one("serial", 0.5).text
-    assert "as they stand on the sheet" in one("serial", 0.5, {"order": None}).text
+    told = one("serial", 0.5, {"order": None}, note="in the order of the rows on the sheet")
+    assert told.text.endswith("than others. In the order of the rows on the sheet.")
 
 
 def test_spread_that_grows_is_said_to_grow():
