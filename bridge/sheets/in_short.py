@@ -12,6 +12,7 @@ from bridge.sheets import figures, words
 from bridge.sheets.book import ModelSheet
 
 GOES = "goes with"  # association, not cause
+_MANY = 3.0  # on the log scale: twenty times
 _PERCENT_STEP = 1.1  # what a log predictor is raised by
 
 
@@ -112,6 +113,8 @@ def _change(model: ModelSheet, result: ModelResult, eta: float) -> str:
     """A change of `eta` on the fitted scale: `5.2 hours more`, `13% more hours`."""
     way = "more" if eta >= 0 else "less"
     if result.spec.response_shape is Shape.LOG:
+        if eta > _MANY:
+            return f"many times the {_response(model, result)}"
         return f"{figures.percent(abs(math.expm1(eta)))} {way} {_response(model, result)}"
     number = figures.sentence_number(abs(eta), 2)
     unit = words.unit_in(model.table, result.spec.response)

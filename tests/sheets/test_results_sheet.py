@@ -11,7 +11,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from bridge.regression.results import SearchResult, Subset
-from bridge.sheets import results, verdicts, words
+from bridge.sheets import in_short, results, verdicts, words
 from tests.sheets import layout
 from tests.sheets.cases import book, five_rows, forty_levels, nothing_fitted, one_predictor, twelve_models, yard
 
@@ -112,6 +112,16 @@ def test_effects_are_told_in_the_units_of_the_columns():
     assert f"10% more length goes with {100 * (1.1**elasticity - 1):.0f}% more hours" in logs
     assert "The effect of length depends on hull." in crossed
     assert straight.startswith("A: hours by length, hull and coats, from 117 rows. It accounts for ")
+
+
+@given(st.sampled_from([0, 1, 2]), st.floats(-1e6, 1e6))
+def test_effects_of_any_size_make_whole_sentences(at, factor):
+    model, result = yard().fitted[at]
+    changed = replace(result, fit=replace(result.fit, coefficients=result.fit.coefficients * factor))
+    for phrase in in_short.strongest(model, changed, 3):
+        assert "nan" not in phrase
+        assert "inf" not in phrase
+        assert len(phrase) < 120
 
 
 def test_a_bend_is_told_on_both_sides():
