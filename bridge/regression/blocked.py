@@ -12,6 +12,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from fractions import Fraction
+from typing import TypeVar
 
 import numpy as np
 from numpy.typing import NDArray
@@ -28,6 +29,7 @@ NEARLY_DEPENDENT = 1e-5  # sine of the angle between a column and those before i
 ORTHONORMAL = 1e-11  # how far the first factorisation may leave the columns from it: leverages keep those digits
 
 Array = NDArray[np.float64]
+Values = TypeVar("Values", Array, NDArray[np.intp])
 
 
 @dataclass(frozen=True, slots=True)
@@ -79,7 +81,7 @@ def fit(
     """
     problem = _shifted(spec, observations, columns, y, weights)
     products = _cross_products(problem, observations)
-    factor = _factor(products[:-1, :-1])
+    factor = _factor(products[:-1, :-1]) if np.isfinite(products).all() else None
     if factor is None:
         return None
     solved = _solve(problem, products, factor, spec.intercept)
@@ -94,27 +96,28 @@ def _shifted(
     root = None if weights is None else np.sqrt(weights)
     if not spec.intercept:
         return _Shifted(columns, x, y, weights, root, np.zeros(len(columns)), 0.0)
-    sample = np.arange(0, observations.n, max(1, observations.n // 1000))
-    shift = design.matrix(columns, observations, sample).mean(axis=0)
+    shift = design.matrix(columns, observations, _sample(np.arange(observations.n))).mean(axis=0)
     shift[0] = 0.0
-    return _Shifted(columns, x, y, weights, root, shift, float(y[sample].mean()))
+    return _Shifted(columns, x, y, weights, root, shift, float(_sample(y).mean()))
 
 
 def _cross_products(problem: _Shifted, observations: Observations) -> Array:
     """First pass: fills x, and sums the products of the shifted columns and response, (p + 1, p + 1)."""
 
     def work(rows: slice) -> Array:
-        design.matrix(problem.columns, observations, rows, out=problem.x[rows])
-        both = problem.block(rows)
-        return np.asarray(both.T @ both)
+        with np.errstate(over="ignore", invalid="ignore"):  # looked for in the sums
+            design.matrix(problem.columns, observations, rows, out=problem.x[rows])
+            both = problem.block(rows)
+            return np.asarray(both.T @ both)
 
-    return _total(over_blocks(observations.n, work))
+    with np.errstate(invalid="ignore"):
+        return _total(over_blocks(observations.n, work))
 
 
 def _factor(products: Array) -> tuple[Array, float] | None:
-    """R^-1 of X'WX = R'R and the condition number of the scaled columns; None: nearly dependent or not finite."""
+    """R^-1 of X'WX = R'R and the condition number of the scaled columns; None: nearly dependent."""
     lengths = np.sqrt(np.diag(products))
-    if not (np.isfinite(products).all() and lengths.all()):
+    if not lengths.all():
         return None
     try:
         scaled = np.linalg.cholesky(products / np.outer(lengths, lengths)).T
@@ -249,10 +252,44 @@ def _digits(problem: _Shifted, solved: _Solved, coefficients: Array, slopes: Arr
     """What the worst coefficient or standard error is good for.
 
     Each row's rounding error is about a unit of the sum of its terms' sizes; a coefficient gathers them by its row
-    of R^-1. The standard errors have those of the factorisation.
+    of R^-1, and the columns' rounding against the residuals by two. A column far from zero for its spread has its
+    own decimals rounded coarsely. The standard errors have the errors of the factorisation besides.
     """
+    n = len(problem.y)
     weight = 1.0 if problem.root is None else problem.root**2
-    size = np.sqrt((coefficients**2) @ lengths**2 + np.sum(weight * problem.y**2))
-    with np.errstate(divide="ignore"):
-        share = slopes * size / np.sqrt(len(problem.y)) / np.abs(coefficients)
-    return float(min(-np.log10(SAFETY * UNIT * max(share.max(), solved.condition, 1.0)), 15.0))
+    share = np.array([_share(column) for column in problem.x.T])
+    squares = (coefficients * lengths) ** 2 @ share + np.sum(weight * problem.y**2) * _share(problem.y)
+    squares += solved.rss * np.sum((slopes * lengths)[share > 0] ** 2) / n
+    own = np.array([_coarse(column, shift) for column, shift in zip(problem.x.T, problem.shift, strict=True)])
+    error = slopes * np.sqrt(squares + solved.tss / n) + np.abs(coefficients) * own
+    if problem.shift.any():
+        error[0] += np.abs(coefficients * problem.shift) @ own
+    with np.errstate(divide="ignore", invalid="ignore"):
+        worst = np.max(error / np.abs(coefficients))
+    return float(min(-np.log10(SAFETY * UNIT * max(worst, solved.condition, own.max(), 1.0)), 15.0))
+
+
+def _share(column: Array) -> float:
+    """The squared share of the values' rounding that is left when rows average it: none of whole numbers'.
+
+    Equal values are rounded alike, so what counts is how many different ones there are, judged by the pairs that
+    meet in a sample.
+    """
+    sample = _sample(column)
+    if (sample == np.rint(sample)).all():
+        return 0.0
+    size, different = len(sample), len(np.unique(sample))
+    if 2 * different <= size:
+        return 1.0
+    return 1.0 / min(len(column), size**2 / (2 * (size - different) + 1))
+
+
+def _coarse(column: Array, shift: float) -> float:
+    """The values' rounding by their spread, in units of the last place: none for whole numbers."""
+    sample = _sample(column)
+    spread = float(np.sqrt(np.mean((sample - shift) ** 2)))
+    return float(np.sqrt(np.mean(sample**2) * _share(column))) / spread if spread else 0.0
+
+
+def _sample(column: Values) -> Values:
+    return column[:: max(1, len(column) // 1000)]
