@@ -8,7 +8,7 @@ from dataclasses import dataclass
 
 from bridge.regression.design import term_name
 from bridge.regression.results import ModelResult, Nested
-from bridge.regression.spec import CategoryTerm, NumberTerm, Shape
+from bridge.regression.spec import CategoryTerm, Errors, FitBy, NumberTerm, Shape
 from bridge.sheets import figures, in_short, readings, typical, words
 from bridge.sheets.book import Book, ModelSheet
 
@@ -113,7 +113,7 @@ def _accounts(model: ModelSheet, result: ModelResult) -> str:
     shape = "" if spec.response_shape is Shape.AS_IS else f"the {spec.response_shape.value} of "
     response = f"{shape}{words.name_in(model.table, spec.response)}"
     terms = [words.name_in(model.table, term.column) for term in spec.terms]
-    rows = words.plural(fit.n, "row")
+    rows = ", ".join([words.plural(fit.n, "row"), *_asked(model, result)])
     if not terms:
         return f"the mean of {response}, from {rows}, with nothing to explain it."
     share = figures.percent(fit.r_squared, 3 if fit.r_squared > 0.99 else 2)
@@ -122,6 +122,29 @@ def _accounts(model: ModelSheet, result: ModelResult) -> str:
     if math.isfinite(fit.loo_r_squared) and fit.r_squared - fit.loo_r_squared > OPTIMISM:
         unseen = f" (but for only {figures.percent(max(fit.loo_r_squared, 0.0))} on rows left out)"
     return f"{response} by {words.listing(terms, most=5)}, from {rows}. It accounts for {share} {about}{unseen}."
+
+
+def _asked(model: ModelSheet, result: ModelResult) -> list[str]:
+    """What was asked besides the columns, where it is not the usual."""
+    spec, said = result.spec, []
+    for one in model.request.filters:
+        values = words.listing([str(value) if isinstance(value, str) else f"{value:g}" for value in one.values])
+        comparison = one.comparison if one.comparison in ("equals", "is not") else f"is {one.comparison}"
+        said.append(f"only where {words.name_in(model.table, one.column)} {comparison} {values}")
+    if spec.weight is not None:
+        said.append(f"weighted by {words.name_in(model.table, spec.weight)}")
+    if spec.fit_by is FitBy.RESISTANT:
+        said.append("outlying rows counting for less")
+    if spec.errors is not Errors.ORDINARY:
+        said.append(f"standard errors for {_ERRORS[spec.errors]}")
+    if result.search is not None:
+        dropped = [words.label_in(model.table, term) for term in result.search.dropped]
+        left = f", {words.listing(dropped)} left out" if dropped else ""
+        said.append(f"terms chosen by {result.search.by}{left}")
+    return said
+
+
+_ERRORS = {Errors.UNEVEN_SPREAD: "uneven spread", Errors.GROUPED: "grouped rows", Errors.SERIAL: "a series"}
 
 
 def _effects(model: ModelSheet, result: ModelResult) -> list[str]:

@@ -11,7 +11,9 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from bridge.regression.results import SearchResult, Subset
+from bridge.regression.spec import Errors
 from bridge.sheets import in_short, results, verdicts, words
+from bridge.workbook.request import Filter
 from tests.sheets import layout
 from tests.sheets.cases import book, five_rows, forty_levels, nothing_fitted, one_predictor, twelve_models, yard
 
@@ -122,6 +124,17 @@ def test_effects_of_any_size_make_whole_sentences(at, factor):
         assert "nan" not in phrase
         assert "inf" not in phrase
         assert len(phrase) < 120
+
+
+def test_what_was_asked_besides_the_columns_is_told():
+    model, result = yard().fitted[0]
+    filters = (Filter("hull", "is not", ("oak",), "H20"), Filter("length (m)", "at least", (8.5,), "H23"))
+    spec = replace(result.spec, weight="coats", errors=Errors.UNEVEN_SPREAD)
+    asked = replace(model, request=replace(model.request, filters=filters))
+    assert (
+        "from 117 rows, only where hull is not oak, only where length is at least 8.5, weighted by coats, "
+        "standard errors for uneven spread." in verdicts.answer(asked, replace(result, spec=spec))
+    )
 
 
 def test_a_bend_is_told_on_both_sides():
