@@ -301,7 +301,7 @@ CATALOGUE: dict[str, tuple[Severity, str]] = {
     "column-renamed": (
         _R,
         'There is no column "{column}" any more; "{new}" stands in its place. If it is the same, type "{new}" in '
-        "{label_cell}. If not, clear the entries of that row.",
+        "{at}. If not, clear the entries of that row.",
     ),
     "column-empty": (_R, '"{column}" is used in {at}, but that column is empty on "{sheet}".'),
     "entry-not-words": (
@@ -354,7 +354,10 @@ CATALOGUE: dict[str, tuple[Severity, str]] = {
     "date-as-number": (_N, '"{column}" holds dates; as a number it counts in days.'),
     "yes-no-as-number": (_N, '"{column}" holds TRUE and FALSE; as a number TRUE is 1 and FALSE is 0.'),
     "no-predictor": (_W, "The model has no predictor yet, so it only gives the mean. Write one beside another column."),
-    "nothing-to-fit": (_R, "Without a predictor and without an intercept there is nothing to fit. Add a predictor."),
+    "nothing-to-fit": (
+        _R,
+        "Without a predictor and without an intercept there is nothing to fit ({at}). Add a predictor.",
+    ),
     # workbook: crossed terms
     "crossed-not-yes": (_R, '"{typed}" in {at} is not understood: write "yes" where a model takes the product.'),
     "crossed-incomplete": (_R, "A crossed term needs two columns; {at} names none."),
@@ -373,7 +376,7 @@ CATALOGUE: dict[str, tuple[Severity, str]] = {
         '"{typed}" in {at} is not an interval level. Write a percentage from 50% to below 100%, such as 95%.',
     ),
     "filter-without-column": (_R, '{at} says how to choose rows, but "{where}" names no column.'),
-    "filter-without-value": (_R, 'The rows where "{column}" {comparison} … ({at}): the value is missing below.'),
+    "filter-without-value": (_R, 'The row filter names "{column}" ({at}) but no value to compare it with.'),
     "filter-other-sheet": (_R, '"{column}" ({at}) is not a column of "{sheet}", where the model\'s columns are.'),
     "filter-order-on-text": (
         _R,
@@ -381,7 +384,7 @@ CATALOGUE: dict[str, tuple[Severity, str]] = {
     ),
     "filter-between": (_R, '"{typed}" in {at}: between takes two values, as in "5 and 12".'),
     "filter-value": (_R, '"{typed}" in {at} cannot be compared with "{column}": {kind} is needed.'),
-    "filter-leaves-nothing": (_R, 'No row is left: none has "{column}" {comparison} {value} ({at}).{hint}'),
+    "filter-leaves-nothing": (_R, "No row is left: in none of them {condition} ({at}).{hint}"),
     "filter-value-absent": (
         _W,
         'No row has "{column}" equal to "{value}", so leaving those out changes nothing.{hint}',
@@ -439,12 +442,21 @@ CATALOGUE: dict[str, tuple[Severity, str]] = {
         _N,
         '{rows} among those used are hidden on "{sheet}". They count all the same; "use rows where" leaves rows out.',
     ),
-    "no-rows": (_R, 'No row of "{sheet}" is complete: each has a blank or an error in one of the columns used.'),
-    "too-few-rows": (_R, "{rows} cannot carry {count} coefficients. Use fewer terms, or more cases."),
-    "constant-response": (_R, '"{column}" is {value} in every row used, so there is nothing to explain.'),
-    "one-level": (_R, '"{column}" is "{level}" in every row used; a category needs at least two levels.'),
-    "one-group": (_R, 'All rows used belong to the group "{level}" of "{column}"; grouped errors need more.'),
-    "base-not-in-rows": (_R, '"{column}" is never "{base}" in the rows used, so that cannot be the base.{hint}'),
+    "no-rows": (
+        _R,
+        'No row of "{sheet}" is complete: each has a blank or an error in one of the columns used ({at} and others).',
+    ),
+    "too-few-rows": (
+        _R,
+        "{rows} cannot carry the {count} coefficients asked for ({at}). Use fewer terms, or more cases.",
+    ),
+    "constant-response": (
+        _R,
+        'The response "{column}" ({at}) is {value} in every row used, so there is nothing to explain.',
+    ),
+    "one-level": (_R, '"{column}" ({at}) is "{level}" in every row used; a category needs at least two levels.'),
+    "one-group": (_R, 'All rows used belong to the group "{level}" of "{column}" ({at}); grouped errors need more.'),
+    "base-not-in-rows": (_R, '"{column}" is never "{base}" in the rows used, so that cannot be the base ({at}).{hint}'),
     "log-of-nothing": (
         _R,
         '"{column}" has {value} in {cell}{more}, and only numbers above zero have a log. '
@@ -464,8 +476,8 @@ CATALOGUE: dict[str, tuple[Severity, str]] = {
         'The weight "{column}" is {value} in {cell}{more}; weights must be above zero. Empty the cell to leave the '
         "row out.",
     ),
-    "too-many-lags": (_R, "{lags} lags need more than the {rows} rows there are. Ask for fewer."),
-    "too-many-folds": (_R, "{folds} folds need at least as many rows; there are {rows}."),
+    "too-many-lags": (_R, "{lags} lags ({at}) need more than the {rows} rows there are. Ask for fewer."),
+    "too-many-folds": (_R, "{folds} folds ({at}) need at least as many rows; there are {rows}."),
     # workbook: the data as found
     "found-blanks": (_N, "{column} is blank in {cells}."),
     "found-errors": (_W, "{column} holds an error in {cells}."),

@@ -12,6 +12,7 @@ from bridge.workbook import spelling
 from bridge.workbook.request import Scalar
 
 MOST_POWER = 12
+_LONGEST = 200
 
 
 class Role(StrEnum):
@@ -86,6 +87,8 @@ def parse(typed: Scalar) -> Entry | Misread | None:
     if not isinstance(typed, str):
         return Misread("entry-not-words", {"typed": number_as_typed(typed)})
     text = _spaced(typed)
+    if len(text) > _LONGEST:
+        return Misread("entry-unknown-word", {"typed": f"{text[:60]}…", "because": "", "hint": _roles()})
     entry = _parsed(text)
     if isinstance(entry, Misread):
         return replace(entry, fields={"typed": text, **entry.fields})
@@ -141,9 +144,13 @@ def _hint(text: str, word: str) -> str:
     known = (*_ROLES, *_SHAPES, *_POWERS, "bend", "base", "power")
     near = spelling.nearest(word, known)
     if near is None:
-        return f" The roles are {', '.join(role.value for role in Role)}."
+        return _roles()
     fixed = re.sub(re.escape(word), near, text, count=1, flags=re.I)
     return f' Did you mean "{fixed}"?'
+
+
+def _roles() -> str:
+    return f" The roles are {', '.join(role.value for role in Role)}."
 
 
 # --- parts that carry a value ------------------------------------------------------------------

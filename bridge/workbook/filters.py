@@ -48,7 +48,7 @@ def _filters(asking: Asking, table: Table | None, typed: Mapping[str, Typed]) ->
             continue
         words = comparison.meaning if comparison is not None else "equals"
         if value is None:
-            asking.tell("filter-without-value", column.cell, column=found.name, comparison=words)
+            asking.tell("filter-without-value", column.cell, column=found.name)
             continue
         values = _values(asking, table, found, words, value)
         if values is not None:

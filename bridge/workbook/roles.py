@@ -102,7 +102,7 @@ def _resolved(asking: Asking, row: GridRow, entry: Entry, cell: str) -> Used | N
     label_cell = address(row.row, asking.grid.label_column)
     new = asking.arranged.renamed.get(row.label)
     if new is not None:
-        asking.tell("column-renamed", cell, column=row.label, new=new, label_cell=label_cell)
+        asking.tell("column-renamed", label_cell, column=row.label, new=new)
     else:
         tell_unknown(asking, row.label, cell)
     return None

@@ -140,9 +140,14 @@ class _Taking:
         self.problems: list[Problem] = []
 
     def tell(self, key: str, cell: str, **fields: object) -> None:
-        """A message about a cell, by its full name; an empty one stands for the model's header."""
-        cell = cell or request_cell(self.asked.entries.get("model", "A1"))
+        """A message about a cell, by its full name; what it says may call a cell of the request by its address."""
+        fields.setdefault("at", cell.removeprefix(request_cell("")))
         self.problems.append(say(key, cell=cell, model=self.asked.name, **fields))
+
+    def _entry(self, key: str) -> str:
+        """The cell of what was asked about a column or a setting."""
+        entries = self.asked.entries
+        return request_cell(entries.get(key) or entries.get("model", "A1"))
 
     def filtered(self) -> Rows:
         """The rows that pass all filters."""
@@ -165,9 +170,9 @@ class _Taking:
                 self.tell("filter-value-absent", request_cell(one.cell), column=one.column, value=wanted, hint=hint)
         if not through.any():
             known = {text for text in column.texts if text} if one.comparison == "equals" else set()
-            words = {"column": one.column, "comparison": one.comparison, "value": _said(self.table, column, one)}
             hint = spelling.did_you_mean(wanted, known)
-            self.tell("filter-leaves-nothing", request_cell(one.cell), hint=hint, at=one.cell, **words)
+            condition = _filter_words(self.table, one)
+            self.tell("filter-leaves-nothing", request_cell(one.cell), hint=hint, condition=condition)
 
     # --- cells
 
@@ -227,7 +232,7 @@ class _Taking:
     def tell_left_out(self, columns: Sequence[Use], kept: Rows) -> None:
         """How many rows are not used, and why, in one note for blanks and one for filters."""
         filtered_out = int(np.count_nonzero(~kept))
-        if filtered_out:
+        if filtered_out and kept.any():
             words = " and ".join(_filter_words(self.table, one) for one in self.asked.filters)
             cell = request_cell(self.asked.filters[0].cell)
             self.tell("rows-filtered", cell, rows=_rows(filtered_out), condition=words)
@@ -276,8 +281,7 @@ class _Taking:
 
     def check_model(self, spec: ModelSpec, observations: Observations, rows: NDArray[np.intp]) -> None:
         """Whether the rows are enough, and varied enough, for what is asked."""
-        entries = self.asked.entries
-        response = request_cell(entries.get(spec.response, ""))
+        response = self._entry(spec.response)
         if not observations.n:
             if not any(problem.key == "filter-leaves-nothing" for problem in self.problems):
                 self.tell("no-rows", response, sheet=self.table.sheet)
@@ -291,16 +295,16 @@ class _Taking:
             value = kinds.number_text(float(numbers[0]))
             self.tell("constant-response", response, column=spec.response, value=value)
         if spec.lags is not None and spec.errors is Errors.SERIAL and spec.lags >= observations.n:
-            self.tell("too-many-lags", request_cell(entries.get("lags", "")), lags=spec.lags, rows=observations.n)
-        if "folds" in entries and spec.folds > observations.n:
-            self.tell("too-many-folds", request_cell(entries["folds"]), folds=spec.folds, rows=observations.n)
+            self.tell("too-many-lags", self._entry("lags"), lags=spec.lags, rows=observations.n)
+        if "folds" in self.asked.entries and spec.folds > observations.n:
+            self.tell("too-many-folds", self._entry("folds"), folds=spec.folds, rows=observations.n)
 
     def _check_categories(self, spec: ModelSpec, observations: Observations) -> None:
         for term in spec.terms:
             if not isinstance(term, CategoryTerm):
                 continue
             names = observations.levels(term.column).names
-            cell = request_cell(self.asked.entries.get(term.column, ""))
+            cell = self._entry(term.column)
             if len(names) == 1:
                 self.tell("one-level", cell, column=term.column, level=names[0])
             elif term.base is not None and term.base not in names:
@@ -309,7 +313,7 @@ class _Taking:
         if spec.group is not None and spec.errors is Errors.GROUPED:
             names = observations.levels(spec.group).names
             if len(names) == 1:
-                cell = request_cell(self.asked.entries.get(spec.group, ""))
+                cell = self._entry(spec.group)
                 self.tell("one-group", cell, column=spec.group, level=names[0])
 
 

@@ -142,8 +142,8 @@ def _note_entries(asking: Asking) -> None:
 def _check_name(asking: Asking) -> None:
     name = grids.plain_name(asking.name)
     if name != asking.name:
-        first = asking.grid.model_columns.get(name)
-        other = address(asking.grid.column_header or 0, first) if first is not None else "another column"
+        alike = [at for other, at in asking.grid.model_columns.items() if other.casefold() == name.casefold()]
+        other = address(asking.grid.column_header or 0, alike[0]) if alike else asking.header_cell
         asking.tell("model-name-twice", asking.header_cell, name=name, other=other)
     elif not grids.is_model_name(name):
         asking.tell("model-name-bad", asking.header_cell, name=name, most=grids.MOST_NAME)
