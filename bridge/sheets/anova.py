@@ -9,7 +9,7 @@ from bridge.page.cells import Format
 from bridge.page.sheet import Sheet
 from bridge.regression.results import AnovaRow, ModelResult
 from bridge.regression.spec import Errors
-from bridge.sheets import figures, style, words
+from bridge.sheets import figures, style, top, words
 from bridge.sheets.book import Book, ModelSheet
 from bridge.sheets.paper import ROW_POINTS, Paper
 
@@ -38,7 +38,7 @@ def places(book: Book) -> dict[str, Span]:
 def _laid_out(book: Book) -> tuple[Sheet, dict[str, Span]]:
     paper = Paper("fit ANOVA", dict(_WIDTHS))
     what = "How much of the response's variation each part of a model accounts for."
-    paper.top(book, "Where the variation goes", what, _LAST)
+    top.put(paper, book, "Where the variation goes", what, _LAST)
     spans: dict[str, Span] = {}
     for model, result in book.fitted:
         spans[model.name] = _block(paper, model, result)

@@ -12,7 +12,7 @@ from bridge.page.cells import Format, Value, address, quoted
 from bridge.page.charts import Chart
 from bridge.page.sheet import Link, Sheet
 from bridge.regression.results import ModelResult
-from bridge.sheets import behind, charts, figures, readings, remarks, style, words
+from bridge.sheets import behind, charts, figures, readings, remarks, style, top, words
 from bridge.sheets.book import Book, ModelSheet
 from bridge.sheets.paper import ROW_POINTS, Paper
 
@@ -37,7 +37,7 @@ def lay_out(book: Book) -> Sheet:
     """The sheet `fit diagnostics`."""
     paper = Paper("fit diagnostics", dict(_WIDTHS))
     what = "What was checked, what was found, and what it means for the use of each model."
-    paper.top(book, "How far the models can be trusted", what, _LAST)
+    top.put(paper, book, "How far the models can be trusted", what, _LAST)
     gallery = charts.draw(book)
     _examined(paper, book)
     contents = _contents(paper, book)

@@ -2,15 +2,14 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, field, replace
+from collections.abc import Sequence
+from dataclasses import dataclass, field
 from typing import Any
 
 from bridge.page.cells import Cell, Format, Value
 from bridge.page.charts import Chart
-from bridge.page.sheet import Block, Link, Merge, Sheet
-from bridge.sheets import measure, style, top
-from bridge.sheets.book import Book
+from bridge.page.sheet import Block, DropDown, Highlight, Link, Merge, Sheet
+from bridge.sheets import measure, style
 
 ROW_POINTS = 15.0
 
@@ -32,15 +31,9 @@ class Paper:
     heights: dict[int, float] = field(default_factory=dict)
     links: list[Link] = field(default_factory=list)
     charts: list[Chart] = field(default_factory=list)
+    highlights: list[Highlight] = field(default_factory=list)
+    drop_downs: list[DropDown] = field(default_factory=list)
     pages: list[int] = field(default_factory=lambda: [0])
-
-    def top(self, book: Book, title: str, what: str, last: int) -> None:
-        """The lines that every sheet begins with, across the columns up to `last`; the next free row comes after."""
-        self.cells.update(top.lines(book, title, what))
-        self.heights.update(top.HEIGHTS)
-        self.row = 1
-        self.spread(str(self.cells[(1, 0)].value), 0, last, replace(style.SUBTITLE, wrap=True))
-        self.row = top.ROWS
 
     def put(self, column: int, value: Value, look: Format, row: int | None = None) -> None:
         """One cell, in the current row unless told otherwise; the row is not left."""
@@ -136,17 +129,10 @@ class Paper:
             merges=tuple(self.merges),
             links=tuple(self.links),
             charts=tuple(self.charts),
+            highlights=tuple(self.highlights),
+            drop_downs=tuple(self.drop_downs),
             **rest,
         )
 
     def _height(self, text: str, first: int, last: int, look: Format) -> float:
         return measure.height(text, self.span(first, last), look.size, look.bold)
-
-
-def merged(*parts: Mapping[int, float]) -> dict[int, float]:
-    """Column widths from several sources; the widest counts."""
-    widths: dict[int, float] = {}
-    for part in parts:
-        for column, width in part.items():
-            widths[column] = max(widths.get(column, 0.0), width)
-    return widths

@@ -10,7 +10,7 @@ from bridge.page.cells import Cell, quoted
 from bridge.page.sheet import Sheet
 from bridge.regression.results import ModelResult
 from bridge.regression.spec import Shape
-from bridge.sheets import charts, figures, measure, style, verdicts, words
+from bridge.sheets import charts, figures, measure, style, top, verdicts, words
 from bridge.sheets.book import Book, ModelSheet
 from bridge.sheets.paper import ROW_POINTS, Paper
 
@@ -43,7 +43,7 @@ def lay_out(book: Book) -> Sheet:
     widths = {0: _LABEL, **dict.fromkeys(range(1, _LAST + 1), _MODEL), _GAP: 2.5}
     widths.update(dict.fromkeys(range(_CHARTS, _CHARTS + _CHART_COLUMNS), 10.0))
     paper = Paper("fit results", widths)
-    paper.top(book, title(book), "What the models say, in a page.", _LAST)
+    top.put(paper, book, title(book), "What the models say, in a page.", _LAST)
     first = paper.row
     for at, group in enumerate(groups):
         if at:

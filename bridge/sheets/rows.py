@@ -17,7 +17,7 @@ from bridge.page.sheet import Block, BlockColumn, Sheet
 from bridge.regression.estimates import mean_in_units
 from bridge.regression.results import ModelResult
 from bridge.regression.spec import Shape
-from bridge.sheets import figures, measure, remarks, style, words
+from bridge.sheets import figures, measure, remarks, style, top, words
 from bridge.sheets.book import Book, ModelSheet
 from bridge.sheets.paper import Paper
 from bridge.sheets.top import ROWS
@@ -87,7 +87,7 @@ def lay_out(book: Book) -> Sheet:
     found = sections(book)
     paper = Paper("fit rows", {0: 8.0, 1: 14.0, 2: 1.5})
     what = "One line per data row: what was used, what was left out and why, and how each row fits."
-    paper.top(book, "Row by row", what, 11)
+    top.put(paper, book, "Row by row", what, 11)
     for section in found:
         _note(paper, section)
         _heads(paper, section, book)

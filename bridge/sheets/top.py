@@ -3,10 +3,12 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
+from dataclasses import replace
 
 from bridge.page.cells import Cell
 from bridge.sheets import seal, style, words
 from bridge.sheets.book import Book, ModelSheet
+from bridge.sheets.paper import Paper
 
 ROWS = 4  # title, what it is, seal, one line of air: the sheet's own matter starts at row 4
 HEIGHTS: Mapping[int, float] = {0: 25.0, 1: 15.0, 2: 15.0}
@@ -23,6 +25,15 @@ def lines(book: Book, title: str, what: str, column: int = 0) -> dict[tuple[int,
         (1, column): Cell(f"{words.sentence(what)} {provenance(book)}", style.SUBTITLE),
         (2, column): Cell(seal.formula(book), style.SEAL),
     }
+
+
+def put(paper: Paper, book: Book, title: str, what: str, last: int) -> None:
+    """The same lines on a sheet under way, the second wrapped across the columns to `last`; the next row is free."""
+    paper.cells.update(lines(book, title, what))
+    paper.heights.update(HEIGHTS)
+    paper.row = 1
+    paper.spread(str(paper.cells[(1, 0)].value), 0, last, replace(style.SUBTITLE, wrap=True))
+    paper.row = ROWS
 
 
 def provenance(book: Book) -> str:
