@@ -234,6 +234,7 @@ def _folds(paper: Paper, model: ModelSheet, result: ModelResult) -> None:
     if not math.isfinite(found.rmse):
         return
     unit = words.unit_in(model.table, result.spec.response)
+    paper.room((found.folds + 3) * ROW_POINTS, _PAGE_POINTS)
     _header(paper, ("rows left out in turn", "", "rows", "typical miss"), (2, 3), "in words", 4)
     code = figures.column_format([found.rmse], found.rmse)
     first = True

@@ -92,16 +92,28 @@ def lay_out(book: Book) -> Sheet:
         _note(paper, section)
         _heads(paper, section, book)
         _lines(paper, section)
+    areas = _areas(found)
     across = max((_last_column(section) for section in found), default=8)
-    return paper.sheet(
+    sheet = paper.sheet(
         across,
         title=book.title("fit rows"),
         freeze=(found[0].first_row, 2) if found else None,
         print_titles=(found[0].header_row, found[0].header_row) if len(found) == 1 else None,
         title_columns=(0, 1) if found else None,
-        fit_width=max((len(section.models) for section in found), default=1),  # one column set a page
         tab_color=style.TAB_DETAIL,
     )
+    return replace(sheet, print_area=areas[0], more_print_areas=areas[1:]) if areas else sheet
+
+
+def _areas(found: Sequence[Section]) -> tuple[Span, ...]:
+    """What is printed: each model's column set on pages of its own, beside the repeated row numbers and labels."""
+    areas: list[Span] = []
+    for section in found:
+        for model in section.models:
+            last = section.starts[model.name] + len(section.keys[model.name]) - 1
+            first = (section.header_row - 2, section.starts[model.name]) if areas else (0, 0)
+            areas.append((first, (section.last_row, last)))
+    return tuple(areas)
 
 
 def places(book: Book) -> dict[str, Span]:
