@@ -8,7 +8,8 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
-from bridge.regression.integers import LIMB, WholeDesign, carried, of_integer
+from bridge.regression.integers import LIMB, ROWS, WholeDesign, carried, of_integer
+from bridge.regression.threads import each_block, over_blocks
 
 Array = NDArray[np.float64]
 Objects = NDArray[np.object_]
@@ -21,19 +22,14 @@ def cross_products(design: WholeDesign) -> Objects:
 
     Entry (i, j) times scale_i * scale_j * scale_of_weights is the sum of w x_i x_j. Good for 2^25 rows.
     """
-    starts = left_starts = design.starts
-    total = None
-    for rows in design.blocks():
+
+    def work(rows: slice) -> NDArray[np.int64]:
         block = design.block(rows)
-        if design.weight is None:
-            product = block @ block.T
-        else:
-            weighted, left_starts = design.weighted(block, rows)
-            product = weighted @ block.T
-        total = product.astype(np.int64) if total is None else total + product.astype(np.int64)
-    assert total is not None
-    left = _put_together(total.astype(object), left_starts)
-    return _put_together(left.T, starts).T
+        return np.asarray((design.weighted(block, rows) @ block.T).astype(np.int64))
+
+    total = sum(each_block(design.n, work, ROWS), np.int64(0))
+    left = _put_together(total.astype(object), design.weighted_starts)
+    return _put_together(left.T, design.starts).T
 
 
 def _put_together(limbs: Objects, starts: NDArray[np.intp]) -> Objects:
@@ -49,16 +45,13 @@ def combinations(design: WholeDesign, factors: Objects, shift: int) -> Array:
     `factors` (m + 1, k) holds Python integers, the response's last; the outcome has shape (n, k).
     """
     matrix, places = _factor_limbs(design, factors)
-    found = np.empty((design.n, factors.shape[1]))
-    step = max(256, CELLS_AT_ONCE // len(matrix))
-    for rows in design.blocks():
-        block = design.block(rows)
-        for start in range(0, block.shape[1], step):
-            part = block[:, start : start + step]
-            sums = (matrix @ part).reshape(places, factors.shape[1], part.shape[1])
-            first = rows.start + start
-            found[first : first + part.shape[1]] = _to_double(sums, shift).T
-    return found
+
+    def work(rows: slice) -> Array:
+        sums = (matrix @ design.block(rows)).reshape(places, factors.shape[1], -1)
+        return _to_double(sums, shift).T
+
+    step = max(256, min(ROWS, CELLS_AT_ONCE // len(matrix)))
+    return np.concatenate(over_blocks(design.n, work, step))
 
 
 def _factor_limbs(design: WholeDesign, factors: Objects) -> tuple[Array, int]:

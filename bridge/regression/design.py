@@ -151,10 +151,11 @@ def matrix(
 ) -> Array:
     """The values of the columns for the rows asked for, shape (k, len(columns)), in doubles; written to `out` if given.
 
-    Raises OutOfDomain with the column and the index of the first row where a shape cannot be taken.
+    Laid out column after column. Raises OutOfDomain with the column and the index of the first row where a shape
+    cannot be taken.
     """
     count = len(range(*rows.indices(observations.n))) if isinstance(rows, slice) else len(rows)
-    values = np.empty((count, len(columns))) if out is None else out
+    values = np.empty((count, len(columns)), order="F") if out is None else out
     for j, column in enumerate(columns):
         values[:, j] = 1.0
         for position, factor in enumerate(column.factors):

@@ -17,6 +17,7 @@ from bridge.regression.integers import WholeDesign, from_computed, from_typed
 from bridge.regression.kernel import Kernel, Sums
 from bridge.regression.results import Alias, DesignColumn
 from bridge.regression.spec import ModelSpec, Observations, Shape
+from bridge.regression.threads import over_blocks
 
 SPARE_BITS = 70  # a double's 53 and room for sums
 ROWS_WITH_BASIS = 10_000
@@ -147,16 +148,16 @@ def _basis(case: _Case) -> Array | None:
 
 def _leverage(case: _Case, basis: Array | None, r_inverse: Array) -> Array:
     if basis is None:
-        found = np.empty(case.whole.n)
-        for rows in case.whole.blocks():
-            found[rows] = _lengths(case.x[rows] @ r_inverse)
+        found: Array = np.concatenate(over_blocks(case.whole.n, lambda rows: _lengths(case.x[rows] @ r_inverse)))
     else:
         found = _lengths(basis)
-    return np.minimum(found if case.weights is None else found * case.weights, 1.0)
+    own: Array = np.minimum(found if case.weights is None else found * case.weights, 1.0)
+    return own
 
 
 def _lengths(rows: Array) -> Array:
-    return np.asarray(np.einsum("ij,ij->i", rows, rows))
+    found: Array = np.einsum("ij,ij->i", rows, rows)
+    return found
 
 
 def _factors(whole: WholeDesign, kept: tuple[int, ...], values: list[Decimal] | Objects, shift: int) -> Objects:

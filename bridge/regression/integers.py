@@ -28,21 +28,22 @@ Integers = NDArray[np.int64]
 LIMB = 20
 BASE = float(2**LIMB)
 ROWS = 8192
+LONG = 10_000  # rows; beyond, cells of more than 15 digits are taken as the doubles they are stored as
 WIDEST = 240  # bits; columns that would need more are put on a grid of powers of two this far below their largest cell
 
 
 @dataclass(frozen=True, slots=True)
 class Whole:
-    """A column of whole numbers with their common scale: value = digits * base^powers * scale.
+    """A column of whole numbers with their common scale: value = digits * 10^powers * scale.
 
-    `digits` (n,) 64-bit; `powers` (n,) not negative, or None where all are 0; `bits`: no value reaches 2^bits.
+    `digits` (n,): doubles that are whole; or, with `powers` (n,) that are not negative, 64-bit integers.
+    `bits`: no value reaches 2^bits.
     `rounded`: some cells are outcomes of a computation, good to a double's 53 bits.
     A hinge has its knot, in units of the scale, still to be taken off; `above` (n,) marks the rows beyond it.
     """
 
-    digits: Integers
+    digits: Array | Integers
     powers: Integers | None
-    base: int
     bits: int
     scale: Fraction
     rounded: bool
@@ -55,36 +56,32 @@ class Whole:
 
 def from_typed(x: Array) -> Whole:
     """The decimals typed, exactly (beyond `WIDEST` bits: on a grid of powers of two)."""
-    typed = decimals(x)
+    typed = decimals(x, short_only=x.size > LONG)
+    if typed is None:
+        return from_computed(x)
     if isinstance(typed.exponent, int):
-        return Whole(typed.digits, None, 10, _bits(typed.digits), _power(10, typed.exponent), not typed.short)
+        digits = typed.digits.astype(np.float64)
+        return Whole(digits, None, _bits(digits), _power(10, typed.exponent), not typed.short)
     common = int(typed.exponent[typed.digits != 0].min(initial=400))
     powers = np.where(typed.digits == 0, 0, typed.exponent - common)
     size = np.log2(np.maximum(np.abs(typed.digits), 1)) + powers * np.log2(10.0)
     bits = int(size.max(initial=0.0)) + 2
     if bits > WIDEST:
         return from_computed(x)
-    return Whole(typed.digits, powers, 10, bits, _power(10, common), not typed.short)
+    return Whole(typed.digits, powers, bits, _power(10, common), not typed.short)
 
 
 def from_computed(x: Array) -> Whole:
     """The doubles themselves, exactly (bits further than `WIDEST` below the largest cell are rounded away)."""
-    fraction, exponent = np.frexp(x)
-    digits = np.rint(fraction * 2.0**53).astype(np.int64)
-    exponent = exponent.astype(np.int64) - 53
-    used = digits != 0
-    top = int(exponent[used].max(initial=-1200))
-    common = max(int(exponent[used].min(initial=1200)), top - (WIDEST - 54)) if used.any() else 0
-    powers = np.where(used, exponent - common, 0)
-    low = powers < 0
-    if low.any():
-        digits[low] = np.rint(np.ldexp(digits[low].astype(np.float64), powers[low].astype(np.int32))).astype(np.int64)
-        powers[low] = 0
-    return Whole(digits, powers, 2, 54 + int(powers.max(initial=0)), _power(2, common), True)
+    exponent = np.frexp(x[x != 0])[1]
+    top = int(exponent.max(initial=-1100))
+    common = max(int(exponent.min(initial=1100)) - 53, top - WIDEST) if exponent.size else 0
+    digits = np.rint(np.ldexp(x, -common))
+    return Whole(digits, None, max(top - common, 0), _power(2, common), True)
 
 
-def _bits(digits: Integers) -> int:
-    return int(np.abs(digits).max(initial=0)).bit_length()
+def _bits(digits: Array) -> int:
+    return int(np.abs(digits).max(initial=0.0)).bit_length()
 
 
 def _power(base: int, exponent: int) -> Fraction:
@@ -101,13 +98,14 @@ def limb_count(bits: int) -> int:
 
 def limbs(whole: Whole, rows: slice) -> Array:
     """The rows asked for as limbs, lowest first, shape (limb_count(bits), k)."""
-    digits = whole.digits[rows]
     count = limb_count(whole.bits)
     if whole.powers is None:
-        found = _cut(digits, count)
+        found = _cut(whole.digits[rows].astype(np.float64, copy=False), count)
     else:
-        table = _power_table(whole.base, int(whole.powers.max(initial=0)))
-        found = multiply(_cut(digits, limb_count(_bits(digits))), table[:, whole.powers[rows]], count)
+        table = _powers_of_ten(int(whole.powers.max(initial=0)))
+        found = multiply(
+            _cut_integers(whole.digits[rows].astype(np.int64, copy=False)), table[:, whole.powers[rows]], count
+        )
     if whole.above is None:
         return found
     return carried(found - np.array(of_integer(whole.knot, count))[:, None], count) * whole.above[rows]
@@ -142,21 +140,33 @@ def of_integer(value: int, count: int | None = None) -> list[float]:
     return found if count is None else [*found, float(value)]
 
 
-def _cut(digits: Integers, count: int) -> Array:
+def _cut(digits: Array, count: int) -> Array:
+    """Whole doubles from the top down: what each limb leaves is exact."""
     found = np.empty((count, digits.size))
+    rest = digits * 2.0 ** (-LIMB * (count - 1))
+    for i in range(count - 1, 0, -1):
+        np.rint(rest, out=found[i])
+        rest = (rest - found[i]) * BASE
+    found[0] = rest
+    return found
+
+
+def _cut_integers(digits: Integers) -> Array:
+    """Integers below 2^58 in three limbs."""
+    found = np.empty((3, digits.size))
     half, mask = 1 << (LIMB - 1), (1 << LIMB) - 1
-    for i in range(count - 1):
+    for i in range(2):
         low = ((digits + half) & mask) - half
         found[i] = low
         digits = (digits - low) >> LIMB
-    found[count - 1] = digits
+    found[2] = digits
     return found
 
 
 @lru_cache(maxsize=64)
-def _power_table(base: int, highest: int) -> Array:
-    count = limb_count((base**highest).bit_length())
-    return np.array([of_integer(base**k, count) for k in range(highest + 1)]).T
+def _powers_of_ten(highest: int) -> Array:
+    count = limb_count((10**highest).bit_length())
+    return np.array([of_integer(10**k, count) for k in range(highest + 1)]).T
 
 
 # --- the design's columns -----------------------------------------------------------------------
@@ -166,7 +176,8 @@ class WholeDesign:
     """The columns of a design, the response last, as whole numbers: formed a block of rows at a time.
 
     `scales` holds each column's unit (column = whole numbers * scale), `rounded` whether a column holds computed
-    cells, `starts` where each column's limbs begin among all limbs. `weight` is the weights' column, or None.
+    cells, `starts` where each column's limbs begin among all limbs (`weighted_starts`: of the columns times the
+    weights). `weight` is the weights' column, or None.
     """
 
     def __init__(
@@ -183,17 +194,15 @@ class WholeDesign:
         self.bits = [max(b, 1) for b in bits] + [max(response.bits, 1)]
         self.scales = [self._scale(factors) for factors in self._factors] + [response.scale]
         self.rounded = [any(self._whole[f].rounded for f in _parts(factors)) for factors in self._factors]
-        self.starts = np.concatenate([[0], np.cumsum([limb_count(b) for b in self.bits])])
+        self.starts = _starts(self.bits)
+        extra = self.weight.bits if self.weight else 0
+        self.weighted_starts = _starts([b + extra for b in self.bits])
 
     def _scale(self, factors: tuple[Factor, ...]) -> Fraction:
         scale = Fraction(1)
         for factor in _parts(factors):
             scale *= self._whole[factor].scale
         return scale
-
-    def blocks(self) -> list[slice]:
-        """The rows in blocks small enough for exact sums."""
-        return [slice(start, min(start + ROWS, self.n)) for start in range(0, self.n, ROWS)]
 
     def block(self, rows: slice) -> Array:
         """All limbs of the rows asked for, column after column, the response last: shape (limbs, k)."""
@@ -214,15 +223,21 @@ class WholeDesign:
                 made[parts] = multiply(self._formed(parts[:-1], rows, made), last, limb_count(bits))
         return made[parts]
 
-    def weighted(self, block: Array, rows: slice) -> tuple[Array, NDArray[np.intp]]:
-        """The block's columns times the weights, as limbs, and where each column begins among them."""
-        assert self.weight is not None
+    def weighted(self, block: Array, rows: slice) -> Array:
+        """The block's columns times the weights, as limbs; each column begins at `weighted_starts`."""
+        if self.weight is None:
+            return block
         weight = limbs(self.weight, rows)
-        columns = [
-            multiply(block[self.starts[j] : self.starts[j + 1]], weight, limb_count(bits + self.weight.bits))
-            for j, bits in enumerate(self.bits)
-        ]
-        return np.concatenate(columns), np.concatenate([[0], np.cumsum([len(c) for c in columns])])
+        out = np.empty((int(self.weighted_starts[-1]), block.shape[1]))
+        for j, bits in enumerate(self.bits):
+            column = block[self.starts[j] : self.starts[j + 1]]
+            product = multiply(column, weight, limb_count(bits + self.weight.bits))
+            out[self.weighted_starts[j] : self.weighted_starts[j + 1]] = product
+        return out
+
+
+def _starts(bits: Sequence[int]) -> NDArray[np.intp]:
+    return np.concatenate([[0], np.cumsum([limb_count(b) for b in bits])])
 
 
 def _parts(factors: tuple[Factor, ...]) -> tuple[Factor, ...]:
@@ -238,7 +253,7 @@ def _parts(factors: tuple[Factor, ...]) -> tuple[Factor, ...]:
 
 def _whole_factor(factor: Factor, observations: Observations) -> Whole:
     if factor.kind == "level":
-        return Whole(factor_values(factor, observations).astype(np.int64), None, 10, 1, Fraction(1), False)
+        return Whole(factor_values(factor, observations), None, 1, Fraction(1), False)
     if factor.kind == "power":
         return from_typed(observations.numbers(factor.column))
     if factor.kind == "hinge":
@@ -255,6 +270,6 @@ def _hinge(x: Array, knot: float) -> Whole:
         digits=typed.digits[:-1],
         powers=None if typed.powers is None else typed.powers[:-1],
         bits=typed.bits + 1,
-        knot=int(typed.digits[-1]) * typed.base**power,
+        knot=int(typed.digits[-1]) * 10**power,
         above=x > knot,
     )

@@ -41,19 +41,19 @@ def solve(spec: ModelSpec, observations: Observations) -> Solved:
     weights = design.weights(spec, observations)
     if not y.any() or (spec.intercept and (y == y[0]).all()):
         raise ConstantResponse(f"{spec.response} is {y[0]!r} in every row", spec.response)
+    quick = None
     with one_blas_thread():
         if observations.n > EXACT_ROWS:
             quick = blocked.fit(spec, observations, layout.columns, y, weights)
             if quick is not None and quick.digits is not None and quick.digits >= LEAST_DIGITS:
                 return Solved(quick, (), layout)
-        x = _finite(design.matrix(layout.columns, observations), layout.columns)
+        x = design.matrix(layout.columns, observations) if quick is None else quick.x
+        _check_finite(x, layout.columns)
         return Solved(*exact_fit.fit(spec, observations, layout, x, y, weights), layout)
 
 
-def _finite(x: Array, columns: tuple[DesignColumn, ...]) -> Array:
-    sizes = np.abs(x).max(axis=0, initial=0.0)
-    if not np.isfinite(sizes).all():
-        j = int(np.argmax(~np.isfinite(sizes)))
-        index = int(np.argmax(~np.isfinite(x[:, j])))
-        raise OutOfDomain(f"{columns[j].label} is too large a number", columns[j].factors[0].column, index)
-    return x
+def _check_finite(x: Array, columns: tuple[DesignColumn, ...]) -> None:
+    for j, column in enumerate(columns):
+        if not np.isfinite(np.dot(x[:, j], x[:, j])):
+            index = int(np.argmax(np.abs(x[:, j])))
+            raise OutOfDomain(f"{column.label} is too large a number", column.factors[0].column, index)

@@ -50,7 +50,7 @@ def find(spec: ModelSpec, observations: Observations) -> Replicates | None:
 
 
 def _comparable(column: NDArray[np.float64] | Levels) -> NDArray[np.float64]:
-    return column.codes.astype(np.float64) if isinstance(column, Levels) else column + 0.0  # no negative zero
+    return column.codes.astype(np.float64) if isinstance(column, Levels) else column
 
 
 def _with_company(values: Sequence[Array]) -> NDArray[np.intp]:

@@ -35,8 +35,14 @@ def _controller() -> ThreadpoolController:
 
 def over_blocks(n: int, work: Callable[[slice], Result], rows: int = ROWS) -> list[Result]:
     """`work` on blocks of so many rows, on a few threads; the outcomes in the order of the blocks."""
+    return list(each_block(n, work, rows))
+
+
+def each_block(n: int, work: Callable[[slice], Result], rows: int = ROWS) -> Iterator[Result]:
+    """The same one by one, for outcomes too large to keep. Nothing is done before the first is asked for."""
     blocks = [slice(start, min(start + rows, n)) for start in range(0, n, rows)]
     if len(blocks) < FEW:
-        return [work(block) for block in blocks]
+        yield from map(work, blocks)
+        return
     with ThreadPoolExecutor(min(MOST_THREADS, os.cpu_count() or 1)) as pool:
-        return list(pool.map(work, blocks))
+        yield from pool.map(work, blocks)

@@ -34,16 +34,21 @@ class Decimals:
     short: bool
 
 
-def decimals(x: Array) -> Decimals:
-    """The shortest decimals that give the doubles x, shape (n,), all finite."""
-    places = _common_places(x)
+def decimals(x: Array, short_only: bool = False) -> Decimals | None:
+    """The shortest decimals that give the doubles x, shape (n,), all finite.
+
+    None with `short_only` where they are not whole multiples of one power of ten with at most 15 digits.
+    """
+    places = common_places(x)
     if places is not None:
         return Decimals(np.rint(x * 10.0**places).astype(np.int64), -places, True)
+    if short_only:
+        return None
     digits, exponent = _shortest(x)
     return Decimals(digits, exponent, bool((np.abs(digits) < 10**15).all()))
 
 
-def _common_places(x: Array) -> int | None:
+def common_places(x: Array) -> int | None:
     """The smallest k with every cell a whole multiple of 10^-k of at most 15 digits, or None."""
     biggest = float(np.abs(x).max(initial=0.0))
     probe = x[:: max(1, x.size // 64)]
