@@ -209,7 +209,10 @@ def _book(
     """Everything the sheets are laid out from."""
     with stages.part("compare"):
         compared = nested.compare({model.name: model.result for model in models if model.result is not None})
-        findings = {name: examine.examine(table) for name, table in contents.tables.items()}
+        findings = {
+            name: examine.examine(table, [model for model in request.models if model.sheet == name])
+            for name, table in contents.tables.items()
+        }
     titles = {entry.ours: entry.name for entry in package.sheets if entry.ours is not None}
     if REQUEST not in titles and REQUEST in contents.own:
         titles[REQUEST] = contents.own[REQUEST].name
@@ -221,6 +224,7 @@ def _book(
         nested=compared,
         cases=suite.cases(contents.own),
         history=suite.history_lines(contents.own),
+        choices=suite.choices(contents.own),
         titles=titles,
         problems=(*problems, *request.problems),
         findings=findings,

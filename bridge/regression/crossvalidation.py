@@ -121,7 +121,7 @@ class _Basis:
             share = np.sum((q @ lost) ** 2, axis=1) / np.maximum(np.sum(q**2, axis=1), 1e-300)
             eta[share > UNKNOWN] = np.nan
         if shape is Shape.AS_IS:
-            return eta
+            return np.asarray(eta)
         others = np.flatnonzero(self.fold_of != fold)
         residual = self.kernel.residual[others] - basis_rows(self.kernel, others) @ move
         return np.asarray(mean_in_units(eta, back_transform(shape, residual)))

@@ -8,7 +8,7 @@ from datetime import datetime
 
 from bridge.messages import Problem
 from bridge.regression.results import ModelResult, Nested
-from bridge.workbook.contents import HistoryLine, NewCase, Taken
+from bridge.workbook.contents import Choices, HistoryLine, NewCase, Taken
 from bridge.workbook.request import ModelRequest, Request
 from bridge.workbook.tables import Table
 
@@ -60,6 +60,7 @@ class Book:
     history: tuple[HistoryLine, ...]
     titles: Mapping[str, str]
     problems: tuple[Problem, ...] = ()
+    choices: Choices = field(default_factory=Choices)
     findings: Mapping[str, Sequence[Problem]] = field(default_factory=dict)
 
     def title(self, name: str) -> str:

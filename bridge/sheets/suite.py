@@ -5,9 +5,9 @@ from __future__ import annotations
 from collections.abc import Mapping
 
 from bridge.page.sheet import DefinedName, Sheet
-from bridge.sheets import anova, coefficients, diagnostics, estimates, history, names, request, results, rows
+from bridge.sheets import anova, coefficients, diagnostics, estimates, history, names, reasons, request, results, rows
 from bridge.sheets.book import OUR_SHEETS, Book
-from bridge.workbook.contents import HistoryLine, NewCase, RawSheet
+from bridge.workbook.contents import Choices, HistoryLine, NewCase, RawSheet
 from bridge.workbook.request import Request
 
 _RESULTS = (results, coefficients, anova, diagnostics, rows, estimates, history)
@@ -39,6 +39,12 @@ def cases(own: Mapping[str, RawSheet]) -> tuple[NewCase, ...]:
     return estimates.read_cases(raw) if raw is not None else ()
 
 
+def choices(own: Mapping[str, RawSheet]) -> Choices:
+    """What the user chose beside the cases."""
+    raw = own.get("fit estimates")
+    return reasons.read_choices(raw) if raw is not None else Choices()
+
+
 def history_lines(own: Mapping[str, RawSheet]) -> tuple[HistoryLine, ...]:
     """The fits so far."""
     raw = own.get("fit history")
@@ -47,4 +53,4 @@ def history_lines(own: Mapping[str, RawSheet]) -> tuple[HistoryLine, ...]:
 
 def typed(own: Mapping[str, RawSheet]) -> tuple[object, ...]:
     """What the user typed on our result sheets, as values that a digest can read."""
-    return cases(own)
+    return (*cases(own), choices(own))

@@ -37,10 +37,21 @@ class Contents:
 
 @dataclass(frozen=True, slots=True)
 class NewCase:
-    """One line the user typed on `fit estimates`: its name, and its entries by data column name."""
+    """One line the user typed on `fit estimates`: its name, its entries by data column name, and the formulas of those
+    that are formulas."""
 
     name: str
     entries: Mapping[str, Scalar]
+    formulas: Mapping[str, str] = field(default_factory=dict)
+
+
+@dataclass(frozen=True, slots=True)
+class Choices:
+    """What the user chose on `fit estimates`: the case and model to explain, and readings to trace back, by model."""
+
+    case: str | None = None
+    model: str = ""
+    readings: Mapping[str, tuple[float, ...]] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, slots=True)
