@@ -20,6 +20,7 @@ from bridge.files.replace import replace
 from bridge.files.snapshot import Snapshot
 from bridge.files.swap import Gone, System, this_system
 
+_MARK = " - fit"
 _MOST_COPIES = 99
 _LARGEST = 1 << 16
 
@@ -69,6 +70,16 @@ def _removed(copy: Seen, system: System) -> bool:
     return not openness.is_open(copy.real, system) and recovery.discard(copy.real, copy.fingerprint.digest, system)
 
 
+def is_copy(path: Path) -> bool:
+    """Whether a workbook is a copy beside another, as the bridge left it."""
+    with suppress(OSError):
+        for record in path.parent.glob(f"{names.PREFIX}*.{names.COPY}") if _MARK in path.stem else ():
+            known = load(record)
+            if known is not None and known.name == path.name and known.untouched(path.parent):
+                return True
+    return False
+
+
 def load(record: Path) -> Copy | None:
     """What a hidden record says; None when there is none, or nothing readable. Raises OSError other than absence."""
     try:
@@ -115,7 +126,7 @@ def _new_copy(snapshot: Snapshot, new: bytes, system: System) -> Path:
 def _free_names(workbook: Path) -> Iterator[Path]:
     for number in range(1, _MOST_COPIES + 1):
         count = f" {number}" if number > 1 else ""
-        path = workbook.with_name(f"{workbook.stem} - fit{count}{workbook.suffix}")
+        path = workbook.with_name(f"{workbook.stem}{_MARK}{count}{workbook.suffix}")
         if not path.exists():
             yield path
 

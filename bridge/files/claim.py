@@ -3,9 +3,9 @@
 A claim is a small hidden file next to the workbook that says who works on it, since when, and for how long that
 holds. It saves double work; it does not carry safety, which the verified swap gives by itself.
 
-A claim whose process has ended is taken over at once on the same machine. A claim from another machine holds until
-its file has not been renewed for `EXPIRY` seconds, both times as the file's own server stamps them, so that the
-machines' clocks need not agree.
+A claim whose process has ended is taken over at once on the same machine. Any claim holds only until its file has
+not been renewed for `EXPIRY` seconds, both times as the file's own server stamps them, so that the machines' clocks
+need not agree.
 """
 
 from __future__ import annotations
@@ -24,6 +24,7 @@ from pathlib import Path
 from bridge.files import names, owner
 
 EXPIRY = 45.0
+_UNREADABLE_EXPIRY = 5.0  # its owner was stopped between making the file and writing into it
 _BEAT = 15.0
 _PAUSE = 0.1
 _LARGEST = 1 << 16
@@ -139,11 +140,12 @@ def _owner_at(path: Path) -> owner.Owner | None:
 
 
 def _dead(path: Path, holder: owner.Owner | None) -> bool:
-    lives = None if holder is None else owner.alive(holder)
-    if lives is not None:
-        return not lives
+    if holder is not None and owner.alive(holder) is False:
+        return True
+    if holder is not None and owner.is_me(holder) and path not in _mine:
+        return True  # left behind in a folder that was moved while we held it
     try:
-        return time_there(path.parent) - path.stat().st_mtime > EXPIRY
+        return time_there(path.parent) - path.stat().st_mtime > (EXPIRY if holder else _UNREADABLE_EXPIRY)
     except OSError:
         return False
 
@@ -166,20 +168,47 @@ class _Renewal:
     """Renews a claim while long work goes on, and removes it at the end."""
 
     def __init__(self, path: Path) -> None:
-        self._path = path
+        self._place = _Place(path)
         self._stopped = threading.Event()
         threading.Thread(target=self._renew, daemon=True, name="claim").start()
 
     def _renew(self) -> None:
         while not self._stopped.wait(_BEAT):
             # Written anew, not touched: only a write lets the server put its own time on the file.
-            with suppress(OSError), open(self._path, "r+b") as file:
+            with suppress(OSError), open(self._place.opened(os.O_WRONLY), "wb") as file:
                 file.write(_content())
 
     def stop(self) -> None:
         """No more renewals; the claim goes, unless somebody else's stands there by now."""
         self._stopped.set()
         with suppress(OSError):
-            holder = _owner(self._path.read_bytes()[:_LARGEST])
+            with open(self._place.opened(os.O_RDONLY), "rb") as file:
+                holder = _owner(file.read(_LARGEST))
             if holder is not None and owner.is_me(holder):
-                self._path.unlink(missing_ok=True)
+                self._place.remove()
+        self._place.close()
+
+
+class _Place:
+    """Where a claim stands: in its folder, even when that is moved meanwhile, where the system can hold on to it."""
+
+    def __init__(self, path: Path) -> None:
+        self._name: str | Path = path
+        self._folder: int | None = None
+        if os.open in os.supports_dir_fd and os.unlink in os.supports_dir_fd:
+            with suppress(OSError):
+                self._folder = os.open(path.parent, os.O_RDONLY | os.O_CLOEXEC)
+                self._name = path.name
+
+    def opened(self, flags: int) -> int:
+        """The claim, open. Raises OSError."""
+        return os.open(self._name, flags, dir_fd=self._folder)
+
+    def remove(self) -> None:
+        """The claim goes. Raises OSError."""
+        os.unlink(self._name, dir_fd=self._folder)
+
+    def close(self) -> None:
+        """Let the folder go."""
+        if self._folder is not None:
+            os.close(self._folder)

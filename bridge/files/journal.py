@@ -11,6 +11,7 @@ from __future__ import annotations
 import json
 import os
 import threading
+import time
 from collections.abc import Iterator
 from contextlib import contextmanager, suppress
 from dataclasses import asdict, dataclass, replace
@@ -21,6 +22,7 @@ from bridge.files.fingerprint import Fingerprint
 
 KEPT = "kept"
 _LARGEST = 1 << 16
+_LONGEST_S = 60.0  # no swap takes longer; its owner lost it, for instance when the folder was moved
 _under_way: set[str] = set()
 _guard = threading.Lock()
 
@@ -106,13 +108,13 @@ def end(entry: Entry) -> None:
 
 
 def under_way(entry: Entry) -> bool:
-    """Whether its owner is, or may be, in the middle of it."""
+    """Whether its owner is, or may be, in the middle of it. Raises OSError."""
     if entry.kept:
         return False
     if owner.is_me(entry.owner):
         with _guard:
             return entry.token in _under_way
-    return owner.alive(entry.owner) is not False
+    return owner.alive(entry.owner) is not False and time.time() - entry.path.stat().st_mtime < _LONGEST_S
 
 
 def load(path: Path) -> Entry | None:

@@ -20,13 +20,21 @@ def refuse_unwritable(path: Path, real: Path) -> None:
     if found.st_nlink > 1:
         raise FileRefused(say("file-hard-linked", name=path.name, count=found.st_nlink))
     # Replacing needs no right to write into the file itself, and root may write into any: the mark is respected.
-    if not found.st_mode & _ANY_WRITE or not os.access(real, os.W_OK):
+    if not found.st_mode & _ANY_WRITE or not _allowed(real, os.W_OK):
         raise FileRefused(say("file-read-only", name=path.name))
     folder = real.parent
-    if not os.access(folder, os.W_OK | os.X_OK):
+    if not _allowed(folder, os.W_OK | os.X_OK):
         raise FileRefused(say("folder-read-only", name=path.name, folder=folder))
     if _sticky_for_us(folder, found):
         raise FileRefused(say("folder-sticky", name=path.name, folder=folder))
+
+
+def _allowed(path: Path, wish: int) -> bool:
+    """Whether we may. What is not there is not a matter of rights. Raises FileNotFoundError."""
+    allowed = os.access(path, wish)
+    if not allowed:
+        path.stat()
+    return allowed
 
 
 def _sticky_for_us(folder: Path, found: os.stat_result) -> bool:

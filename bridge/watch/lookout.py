@@ -226,6 +226,9 @@ class Lookout:
                 self._report(Quiet(book.real, book.path))
             elif book.handled is not None and file_digest(Path(book.real)) == book.handled.digest:
                 book.phase = Phase.HANDLED
+            elif beside.is_copy(Path(book.real)):
+                self._books.by_real.pop(book.real)
+                self._copies.add(book.real)
             else:
                 self._books.ask(book)
                 self._report(Due(self._number, book.real, book.path))

@@ -130,4 +130,4 @@ def _cells(character: str) -> int:
 def _printable(text: str) -> str:
     """File names and messages cannot move the cursor."""
     safe = text.encode("utf-8", "surrogateescape").decode("utf-8", "replace")
-    return "".join(c if c.isprintable() or c == "\n" else "?" for c in safe)
+    return "".join(c if c.isprintable() else " " if c.isspace() else "?" for c in safe)

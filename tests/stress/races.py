@@ -118,8 +118,7 @@ def main() -> int:
             bridge(wanted.bridge, wanted.seed)
         return 0
     bad = 0
-    for parent in wanted.folder or [folder for folder in (PASSING = ("file-missing", "file-being-saved", "file-not-whole")
-TMPFS, DISK) if folder.is_dir()]:
+    for parent in wanted.folder or [folder for folder in (TMPFS, DISK) if folder.is_dir()]:
         for style in wanted.style or SAVERS:
             start = time.monotonic()
             with tempfile.TemporaryDirectory(dir=parent, prefix="races-") as folder:
