@@ -65,8 +65,8 @@ def _negative(weights: Array) -> float:
         u = v / (1 - v)
         products = u[:, None] * scaled
         angle = np.arctan(products).sum(axis=1) / 2
-        size = np.exp(np.log1p(products**2).sum(axis=1) / 4)
-        total += float(np.sum(steps * np.sin(angle) / (u * size) / (1 - v) ** 2)) * (high - low) / 2
+        damped = np.exp(-np.log1p(products**2).sum(axis=1) / 4)
+        total += float(np.sum(steps * np.sin(angle) * damped / (u * (1 - v) ** 2))) * (high - low) / 2
     return float(np.clip(0.5 - total / np.pi, 0.0, 1.0))
 
 

@@ -8,7 +8,6 @@ rows left out never enter; each run has a line of working cells to the right of 
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -91,7 +90,7 @@ def _working(paper: Paper, model: ModelSheet, result: ModelResult, coefficients:
         count = run[1] - run[0] + 1
         part = slice(first, first + count)
         first += count
-        for j, (text, value) in enumerate(_sums(model, result, coefficients, run, part, plan.columns)):
+        for j, (text, value) in enumerate(_sums(model, result, coefficients, run, part, plan)):
             paper.cells[(top + 1 + at, _WIDE + j)] = Cell(Formula(text, value), look)
 
 
@@ -101,7 +100,7 @@ def _sums(
     coefficients: Span,
     run: tuple[int, int],
     part: slice,
-    columns: Sequence[int],
+    plan: _Plan,
 ) -> list[tuple[str, float]]:
     residual = _residual(model, result, coefficients, run)
     ranges = _ranges(model, result, run)
@@ -109,10 +108,13 @@ def _sums(
     e = result.fit.residual[part]
     w = np.ones(len(e)) if result.fit.weights is None else result.fit.weights[part]
     made = [(f"SUMPRODUCT({weight}({residual})^2)", float(np.sum(w * e * e)))]
-    for j in columns:
+    for j in plan.columns:
         x = live.product(result.design.columns[j], ranges)
-        value = math.fsum((w * e * result.design.matrix[part, j]).tolist())
-        made.append((f"SUMPRODUCT({weight}({residual})*({x}))", value))
+        text = f"SUMPRODUCT({weight}({residual})*({x}))"
+        if len(plan.runs) == 1:
+            made.append((_rounded(text, result, j), 0.0))  # all rows together: zero but for rounding
+        else:
+            made.append((text, math.fsum((w * e * result.design.matrix[part, j]).tolist())))
     return made
 
 
@@ -161,10 +163,9 @@ def _answers(paper: Paper, model: ModelSheet, result: ModelResult, plan: _Plan) 
     if plan.columns:
         worst = [f"ABS({total(1 + j)})<={live.number(_zero(result, j))}" for j in plan.columns]
         text = f'IF({"*".join(f"({each})" for each in worst)}=1,"{AGREES}","{DISAGREES}")'
-        largest = max(abs(math.fsum((_weighted(result) * result.design.matrix[:, j]).tolist())) for j in plan.columns)
-        value = Formula("MAX(" + ",".join(f"ABS({total(1 + j)})" for j in plan.columns) + ")", largest)
+        value = Formula("MAX(" + ",".join(f"ABS({_rounded(total(1 + j), result, j)})" for j in plan.columns) + ")", 0.0)
         if max(len(text), len(value.text)) < live.MOST:
-            code = replace(look, number_format="0.0E+00")
+            code = replace(look, number_format="General")
             _line(paper, "largest sum of residual times column (zero but for rounding)", value, code, _guarded(text))
 
 
@@ -185,9 +186,9 @@ def _guarded(text: str) -> str:
     return f'IF(ISERROR({text}),"{DISAGREES}",{text})' if len(text) * 2 + 40 < live.MOST else text
 
 
-def _weighted(result: ModelResult) -> np.ndarray:
-    e = result.fit.residual
-    return e if result.fit.weights is None else e * result.fit.weights
+def _rounded(text: str, result: ModelResult, j: int) -> str:
+    """The sum without what rounding in the spreadsheet leaves of it."""
+    return f"ROUND({text},{-math.ceil(math.log10(_zero(result, j)))})"
 
 
 def _zero(result: ModelResult, j: int) -> float:
