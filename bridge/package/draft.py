@@ -15,7 +15,7 @@ from bridge.package import content_types as types
 from bridge.package.archive import Member, content, packed, part_key, same_content, write_archive
 from bridge.package.package import Package
 from bridge.package.relationships import Relationship, read_relationships, relationships_part
-from bridge.package.xml import canonical, parse, serialise
+from bridge.package.xml import parse, same_meaning, serialise
 
 
 class Draft:
@@ -92,7 +92,7 @@ class Draft:
     def write_xml(self, part: str, root: etree._Element, type_: str = "") -> None:
         """Put in a part that is shared with the user; where it means the same as before, its bytes stay."""
         old = self.package.parts.get(part_key(part))
-        if old is not None and canonical(parse(self.package.read(part), part, self.package.limits)) == canonical(root):
+        if old is not None and same_meaning(parse(self.package.read(part), part, self.package.limits), root):
             self._new[part_key(part)] = old
             return
         self.write(part, [serialise(root)], type_)

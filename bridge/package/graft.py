@@ -19,6 +19,7 @@ from bridge.package.our_names import Marked
 from bridge.package.package import Package, SheetEntry
 from bridge.package.styles import Styles
 from bridge.package.user_objects import NOTHING, Standing, refuse_in_the_way, standing
+from bridge.package.worksheet import stated_widths
 from bridge.page.sheet import DefinedName, Sheet
 
 _WORKSHEET_TYPE = f"{xml.OFFICE_RELS}/worksheet"
@@ -110,7 +111,7 @@ def _cleared(amendment: Amendment, place: _Place, scale: float) -> Standing:
     """What of the user's stands on the sheet to be replaced; our charts are taken off it."""
     if place.entry is None:
         return NOTHING
-    found = standing(amendment.package, place.entry, sheet_parts.stated_widths(place.sheet, scale))
+    found = standing(amendment.package, place.entry, stated_widths(place.sheet, scale))
     refuse_in_the_way(found.objects)
     amendment.release(place.entry)
     for part in found.our_charts:

@@ -22,5 +22,5 @@ class Limits:
     total: int = 4096 * MIB
     ratio: int = 250
     small: int = 16 * MIB
-    part: int = 32 * MIB
-    nodes: int = 2_500_000
+    part: int = 24 * MIB
+    nodes: int = 1_000_000

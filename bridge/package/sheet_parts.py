@@ -11,7 +11,7 @@ from bridge.package.names import Name
 from bridge.package.relationships import Relationship
 from bridge.package.styles import Styles
 from bridge.package.user_objects import Standing
-from bridge.package.worksheet import stated_width, worksheet
+from bridge.package.worksheet import stated_widths, worksheet
 from bridge.page.cells import column_letters, quoted, reference
 from bridge.page.sheet import Sheet
 
@@ -85,11 +85,6 @@ def laid_out(sheet: Sheet, tab: str, scale: float) -> LaidOut:
         names.without_sheets(_print_area(sheet, tab)),
         names.without_sheets(_print_titles(sheet, tab)),
     )
-
-
-def stated_widths(sheet: Sheet, scale: float) -> dict[int, float]:
-    """The widths a layout states, by column."""
-    return {column: stated_width(width, scale) for column, width in sheet.widths.items()}
 
 
 def print_names(sheet: Sheet, tab: str, found: Standing) -> tuple[Name, ...]:

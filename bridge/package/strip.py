@@ -46,7 +46,8 @@ def _restore_styles(amendment: Amendment, made: set[str]) -> None:
     if mark.MADE_STYLES in made:
         _drop_styles(amendment, relation, mark.MADE_STYLES_RELATION in made)
     else:
-        amendment.draft.write_xml(relation.part, styles.restored(root, ours))
+        styles.take_out(root, ours)
+        amendment.draft.write_xml(relation.part, root)
         if mark.MADE_STYLES_TYPE in made:
             amendment.draft.forget_type(relation.part)
 

@@ -7,7 +7,6 @@ same item looks different in canonical XML when the part uses a namespace prefix
 
 from __future__ import annotations
 
-import copy
 import math
 import re
 import zlib
@@ -106,6 +105,8 @@ class _List:
     def __init__(self, styles: etree._Element, name: str) -> None:
         self.styles, self.name = styles, name
         self.element = child(styles, name)
+        if self.element is not None and len(self.element) > MOST_FORMATS:
+            raise FileRefused(say("too-many-formats", count=len(self.element), added=1, limit=MOST_FORMATS))
         self.items = [] if self.element is None else [key(item) for item in _items(self.element)]
         self.index = {item: number for number, item in reversed(list(enumerate(self.items)))}
 
@@ -390,9 +391,8 @@ def ours(root: etree._Element, record: str) -> Ours | None:
     )
 
 
-def restored(root: etree._Element, added: Ours) -> etree._Element:
-    """A copy of the stylesheet without the items the bridge added."""
-    root = copy.deepcopy(root)
+def take_out(root: etree._Element, added: Ours) -> None:
+    """Take the items the bridge added out of the stylesheet."""
     for name, length in added.lengths.items():
         holder = child(root, name)
         if holder is None:
@@ -405,7 +405,6 @@ def restored(root: etree._Element, added: Ours) -> etree._Element:
         for item in elements[len(elements) - extra :]:
             remove_element(item)
         _count_by(holder, -extra)
-    return root
 
 
 def _parsed(record: str) -> dict[str, int] | None:

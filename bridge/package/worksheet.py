@@ -101,13 +101,15 @@ def stated_width(characters: float, scale: float) -> float:
     return min(255.0, int((characters * scale * 7 + 5) / 7 * 256) / 256)
 
 
+def stated_widths(sheet: Sheet, scale: float) -> dict[int, float]:
+    """The widths a layout states, by column: those it gives, and the hidden columns'."""
+    columns = sorted(set(sheet.widths) | sheet.hidden_columns)
+    return {column: stated_width(sheet.widths.get(column, _DEFAULT_WIDTH), scale) for column in columns}
+
+
 def _columns(sheet: Sheet, scale: float, kept: Kept) -> str:
-    columns = sorted(set(sheet.widths) | set(kept.widths) | sheet.hidden_columns)
     out = []
-    for column in columns:
-        width = kept.widths.get(column)
-        if width is None:
-            width = stated_width(sheet.widths.get(column, _DEFAULT_WIDTH), scale)
+    for column, width in sorted({**stated_widths(sheet, scale), **kept.widths}.items()):
         hidden = ' hidden="1"' if column in sheet.hidden_columns else ""
         out.append(f'<col min="{column + 1}" max="{column + 1}" width="{width:g}"{hidden} customWidth="1"/>')
     return f"<cols>{''.join(out)}</cols>" if out else ""

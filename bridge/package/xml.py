@@ -95,9 +95,12 @@ def serialise(root: etree._Element) -> bytes:
     return etree.tostring(root, xml_declaration=True, encoding="UTF-8", standalone=True)
 
 
-def canonical(root: etree._Element) -> bytes:
-    """Canonical form (C14N 1.0), the same for parts that mean the same."""
-    return etree.tostring(root, method="c14n")
+def same_meaning(one: etree._Element, other: etree._Element) -> bool:
+    """Whether two parts have the same canonical form (C14N 1.0)."""
+    try:
+        return etree.tostring(one, method="c14n") == etree.tostring(other, method="c14n")
+    except etree.C14NError:  # a relative namespace has no canonical form
+        return etree.tostring(one) == etree.tostring(other)
 
 
 def local(element: etree._Element) -> str:
@@ -110,11 +113,9 @@ def namespace(element: etree._Element) -> str:
     return etree.QName(element).namespace or ""
 
 
-def children(parent: etree._Element, name: str | None = None) -> Iterator[etree._Element]:
+def children(parent: etree._Element, name: str = "*") -> Iterator[etree._Element]:
     """Child elements in the parent's own namespace, all or those called `name`."""
-    for child in parent:
-        if isinstance(child.tag, str) and namespace(child) == namespace(parent) and name in (None, local(child)):
-            yield child
+    return parent.iterchildren(f"{{{namespace(parent)}}}{name}")
 
 
 def child(parent: etree._Element, name: str) -> etree._Element | None:
