@@ -54,7 +54,8 @@ def lay_out(book: Book) -> Sheet:
         title=book.title("fit estimates"),
         freeze=(FIRST_ROW, 1),
         print_titles=(HEADER_ROW - 1, HEADER_ROW),
-        title_columns=(0, 0),
+        title_columns=(0, len(places.inputs)),
+        fit_width=max(len(places.models), 1),
         tab_color=style.TAB_FILL_IN,
         hidden_columns=frozenset(hidden),
     )
@@ -116,7 +117,9 @@ def _guide(paper: Paper, places: Plan) -> None:
     if not places.models:
         paper.put(0, "No model is fitted; see fit results.", style.BODY, row=4)
         return
-    text = "estimate: the mean of such cases; mean low to high: where that mean lies; case low to high: where a case does."
+    text = (
+        "estimate: the mean of such cases; mean low to high: where that mean lies; case low to high: where a case does."
+    )
     paper.put(0, text, style.SUBTITLE, row=3)
     paper.put(0, "Why this number \u2192", replace(style.BODY, color=style.DEEP, underline=True), row=4)
     paper.row = 4
@@ -130,11 +133,12 @@ def _heads(paper: Paper, places: Plan) -> None:
     paper.put(0, _CASE, head, row=row)
     for each in places.inputs:
         name = each.name if each.used else each.name + NOT_USED
-        paper.put(each.column, name, replace(head, align="left" if each.category else "right"), row=row)
+        side = replace(head, indent=1) if each.category else replace(head, align="right")
+        paper.put(each.column, name, side, row=row)
     for columns in places.models:
         paper.put(columns.first, _title(columns.model, columns), style.HEADING, row=row - 1)
         for at, name in enumerate(columns.headers):
-            look = replace(head, align="right") if name != "remark" else head
+            look = replace(head, align="right") if name != "remark" else replace(head, indent=1)
             paper.put(columns.first + at, name, look, row=row)
     names = [each.name for each in places.inputs]
     tall = [
@@ -163,7 +167,7 @@ def _entries(paper: Paper, places: Plan, row: int, case: NewCase) -> None:
     for each in places.inputs:
         value = case.entries.get(each.name)
         look = style.INPUT if each.category else style.INPUT_NUMBER
-        look = replace(look, align="left") if each.category else replace(look, number_format=_typed(each))
+        look = replace(look, align="left", indent=1) if each.category else replace(look, number_format=_typed(each))
         if not each.used:
             look = replace(style.FACT, align="right")
         formula = case.formulas.get(each.name)

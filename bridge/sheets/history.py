@@ -62,10 +62,11 @@ def lay_out(book: Book) -> Sheet:
     head = replace(style.HEADER, wrap=True)
     numeric = {3, 4, 5, 6, 7, 8}
     looks = [replace(head, align="right") if at in numeric else head for at in range(len(HEADERS))]
+    looks[9] = replace(head, indent=1)
     paper.line(HEADERS, looks)
     for line in _all_lines(book):
         _line(paper, line)
-    return paper.sheet(_LAST, title=book.title("fit history"), freeze=(4, 0), tab_color=style.TAB_DETAIL)
+    return paper.sheet(_LAST - 1, title=book.title("fit history"), freeze=(4, 0), tab_color=style.TAB_DETAIL)
 
 
 def read(raw: RawSheet) -> tuple[HistoryLine, ...]:
@@ -122,10 +123,18 @@ def _changes(now: Mapping[str, Scalar], last: Mapping[str, Scalar], result: Mode
     if moved:
         yield f"Moved most: {words.listing(moved)}."
     before, after = last.get("typical miss"), now.get("typical miss")
-    if isinstance(before, int | float) and isinstance(after, int | float) and before != after:
+    same_miss = _close(before, after)
+    if isinstance(before, int | float) and isinstance(after, int | float) and not same_miss:
         yield f"Typical miss {figures.sentence_number(before, 3)} \u2192 {figures.sentence_number(after, 3)}."
-    if not rows and not moved and before == after:
+    if not rows and not moved and same_miss:
         yield "The same figures."
+
+
+def _close(before: Scalar | None, after: Scalar | None) -> bool:
+    """Equal but for what a save in another program may round away."""
+    if isinstance(before, int | float) and isinstance(after, int | float):
+        return abs(before - after) <= 1e-9 * max(abs(before), abs(after))
+    return before == after
 
 
 def _difference(now: Mapping[str, Scalar], last: Mapping[str, Scalar], key: str) -> int:
@@ -155,7 +164,7 @@ def _line(paper: Paper, fields: Mapping[str, Scalar]) -> None:
         value = fields.get(name)
         look = replace(style.ROW, valign="top")
         if at >= 9:
-            look = replace(look, wrap=at < _LAST)
+            look = replace(look, wrap=at < _LAST, indent=1 if at == 9 else 0)
         elif isinstance(value, int | float) and not isinstance(value, bool):
             whole = at in (3, 4)
             code = figures.WHOLE if whole else "0.0000" if at in (5, 6) else figures.number_format(float(value), 4)
