@@ -5,7 +5,7 @@ Nothing of the user's is moved but down, where a row must be added; nothing is d
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping, Sequence
+from collections.abc import Container, Iterable, Mapping, Sequence
 from dataclasses import dataclass
 
 from bridge.workbook import grid as grids
@@ -77,9 +77,9 @@ class _Page:
         else:
             self.cells[(row, column)] = value
 
-    def used_rows(self) -> set[int]:
-        """The rows in which anything stands."""
-        return {row for row, _ in (*self.cells, *self.formulas)}
+    def used_rows(self, columns: Container[int] | None = None) -> set[int]:
+        """The rows in which anything stands, in the given columns or anywhere."""
+        return {row for row, column in (*self.cells, *self.formulas) if columns is None or column in columns}
 
     def insert(self, row: int, count: int) -> None:
         """Make room: `row` and everything below it moves down by `count`."""
@@ -91,9 +91,12 @@ class _Page:
         self.formulas = {moved(at): text for at, text in self.formulas.items()}
         self.dates = frozenset(moved(at) for at in self.dates)
 
-    def room_after(self, row: int, count: int, then: int | None) -> int:
-        """The first of `count` free rows after `row`, an empty one left before `then`; rows are added as needed."""
-        used, free = self.used_rows(), 0
+    def room_after(self, row: int, count: int, then: int | None, columns: Container[int] | None = None) -> int:
+        """The first of `count` free rows after `row`, an empty one left before `then`; rows are added as needed.
+
+        With `columns`, notes in other columns do not stand in the way.
+        """
+        used, free = self.used_rows(columns), 0
         while free <= count and row + 1 + free not in used and (then is None or row + 1 + free < then):
             free += 1
         if free <= count:
@@ -206,7 +209,9 @@ def _spare_crossed(page: _Page) -> None:
         return
     last = max((row.row for row in grid.crossed_rows), default=grid.crossed_header)
     then = next((row for row in (grid.setting_header, grid.status_header) if row is not None), None)
-    page.room_after(last, SPARE_CROSSED, then)
+    page.room_after(
+        last, SPARE_CROSSED, then, (grid.label_column, *grid.other_columns.values(), *grid.model_columns.values())
+    )
 
 
 def _head_blocks(page: _Page) -> None:

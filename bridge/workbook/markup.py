@@ -35,6 +35,7 @@ _FAR = (
 )
 _REFERENCE = re.compile(rb"\br=[\"']([A-Z]{1,3})(\d{1,7})[\"']")
 _ROW = re.compile(rb"\br=[\"'](\d{1,7})[\"']")
+_STORED_NUMBER = r"\s*[-+]?(?:\d+\.?\d*|\.\d+)(?:[eE][-+]?\d{1,3})?\s*"
 _TEXT_TYPE = re.compile(rb"\bt=[\"']str[\"']")
 
 
@@ -113,35 +114,30 @@ def reaches_too_far(xml: bytes) -> str | None:
 
 
 def serials(xml: bytes, wanted: NDArray[np.int64]) -> dict[tuple[int, int], float]:
-    """The stored numbers of the cells at `wanted` (k, 2), exactly; cells that hold no plain number are missing.
+    """The stored numbers of the cells at `wanted` (k, 2), exactly; a cell that stores no plain number is missing.
 
     Zero-based (row, column).
     """
     if _is_plain(xml):
-        found: dict[tuple[int, int], float] = {}
-        for column in np.unique(wanted[:, 1]).tolist():
-            rows = set(wanted[wanted[:, 1] == column, 0].tolist())
-            found.update(_column_serials(xml, column, rows))
-        return found
-    asked = set(map(tuple, wanted.tolist()))
-    cells = ((cell.row, cell.column, cell.value) for cell in walk(xml) if cell.kind in ("n", ""))
-    return {(row, column): _number(text) for row, column, text in cells if text and (row, column) in asked}
+        columns = np.unique(wanted[:, 1]).tolist()
+        rows = {column: set(wanted[wanted[:, 1] == column, 0].tolist()) for column in columns}
+        found: Iterable[tuple[tuple[int, int], str]] = chain.from_iterable(
+            _column_values(xml, column, rows[column]) for column in columns
+        )
+    else:
+        asked = set(map(tuple, wanted.tolist()))
+        walked = ((cell.row, cell.column, cell.value or "") for cell in walk(xml))
+        found = (((row, column), text) for row, column, text in walked if (row, column) in asked)
+    return {at: float(text) for at, text in found if re.fullmatch(_STORED_NUMBER, text)}
 
 
-def _column_serials(xml: bytes, column: int, rows: set[int]) -> Iterator[tuple[tuple[int, int], float]]:
+def _column_values(xml: bytes, column: int, rows: set[int]) -> Iterator[tuple[tuple[int, int], str]]:
     letters = re.sub(r"\d", "", address(0, column)).encode()
     pattern = rb"\br=[\"']" + letters + rb"(\d+)[\"'][^>]*>\s*(?:" + _FORMULA + rb"\s*)?<v>([^<]*)</v>"
     for match in re.finditer(pattern, xml):
         row = int(match[1]) - 1
         if row in rows:
-            yield (row, column), _number(match[2].decode("ascii", "replace"))
-
-
-def _number(text: str) -> float:
-    try:
-        return float(text)
-    except ValueError:
-        return float("nan")
+            yield (row, column), match[2].decode("ascii", "replace")
 
 
 def _is_plain(xml: bytes) -> bool:

@@ -205,7 +205,7 @@ def _is_wordy(cells: SheetCells, columns: tuple[int, ...], row: int) -> bool:
         state, number = cells.columns[at].state[row], float(cells.columns[at].numbers[row])
         texts += state == State.TEXT
         is_year = state == State.NUMBER and _YEARS[0] <= number <= _YEARS[1] and number == int(number)
-        if state not in (State.TEXT, State.BLANK) and not is_year:
+        if state in (State.NUMBER, State.DATE, State.YES_NO) and not is_year:
             return False
     return texts > 0
 

@@ -258,7 +258,7 @@ def _check_spec(asking: Asking, spec: ModelSpec, typed: Mapping[str, filters.Typ
     """Settings that need something the model does not have, or do nothing in it."""
     candidates = sum(term.candidate for term in spec.terms)
     cells = {label: one.cell for label, one in typed.items()}
-    if not spec.terms:
+    if not spec.terms and not asking.is_refused:
         asking.tell("nothing-to-fit" if not spec.intercept else "no-predictor", response.cell)
     if spec.errors is Errors.GROUPED and spec.group is None:
         asking.tell("grouped-without-group", cells["standard errors"])
