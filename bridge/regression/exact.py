@@ -17,6 +17,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from bridge.regression.rank import independent
+from bridge.regression.results import Factor
 
 Array = NDArray[np.float64]
 Objects = NDArray[np.object_]
@@ -25,20 +26,21 @@ FIRST_DIGITS = 60
 GUARD = 40
 NOTHING = Decimal("1e-25")  # a scaled coefficient below this is a 0 that rounding has touched
 ROUNDING = 4 * 2.0**-53
+MINOR = 1e-6  # a column's share of a relation that does not count
 
 
 @dataclass(frozen=True, slots=True)
 class Problem:
     """Least squares as exact cross-products (m + 1, m + 1), the response last, in the columns' own units.
 
-    Entry (i, j) x scale_i x scale_j x weight_scale is the true sum. `rounded`: the column holds computed cells.
-    `intercept`: the first column is 1 in every row.
+    Entry (i, j) x scale_i x scale_j x weight_scale is the true sum. `computed`: what each column holds of computed
+    cells, by name. `intercept`: the first column is 1 in every row.
     """
 
     cross_products: Objects
     scales: Sequence[Fraction]
     weight_scale: Fraction
-    rounded: Sequence[bool]
+    computed: Sequence[frozenset[Factor]]
     intercept: bool
 
 
@@ -191,13 +193,19 @@ def _scaled(matrix: Objects, done: _Elimination) -> tuple[Array, float]:
 def _within_rounding(problem: Problem, kept: list[int], scaled_inverse: Array) -> int | None:
     """The first column (position among those kept) no farther from those before it than computed cells are rounded.
 
-    Column k is sum_j R_jk^-1 / R_kk^-1 x_j away from the others, at the distance 1 / R_kk^-1.
+    Column k is sum_j R_jk^-1 / R_kk^-1 x_j away from the others, at the distance 1 / R_kk^-1. Only relations are judged
+    whose columns are rounded independently: a x b and b move together when b does.
     """
-    noisy = [problem.rounded[j] for j in kept]
+    noisy = [bool(problem.computed[j]) for j in kept]
     if not any(noisy):
         return None
     noise = ROUNDING * np.sqrt(np.sum(scaled_inverse[noisy] ** 2, axis=0))
-    return int(np.argmax(noise >= 1)) if (noise >= 1).any() else None
+    for k in np.flatnonzero(noise >= 1).tolist():
+        shares = np.abs(scaled_inverse[:, k])
+        sources = [problem.computed[kept[j]] for j in np.flatnonzero(shares > MINOR * shares.max())]
+        if sum(map(len, sources)) == len(frozenset().union(*sources)):
+            return int(k)
+    return None
 
 
 def _dependence(problem: Problem, on: list[int], factors: Objects, index: int, exact: bool) -> Dependence:

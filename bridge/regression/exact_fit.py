@@ -50,7 +50,7 @@ def fit(
     whole = WholeDesign(layout.columns, observations, response, weights)
     weight_scale = whole.weight.scale if whole.weight else Fraction(1)
     solution = exact.solve(
-        exact.Problem(cross_products(whole), whole.scales, weight_scale, whole.rounded, spec.intercept)
+        exact.Problem(cross_products(whole), whole.scales, weight_scale, whole.computed, spec.intercept)
     )
     kept = list(solution.kept)
     if not kept:

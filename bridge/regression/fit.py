@@ -50,7 +50,7 @@ def make(kernel: Kernel, covariance: CovarianceResult, collinearity: Collinearit
         covariance=covariance.covariance,
         covariance_factor=covariance.factor,
         residual_sd=kernel.residual_sd,
-        r_squared=1.0 - ratio(kernel.sums.residual, kernel.sums.total),
+        r_squared=ratio(kernel.sums.regression, kernel.sums.total),
         adjusted_r_squared=_adjusted(kernel),
         loo_r_squared=_left_out(kernel),
         ss_residual=kernel.rss,

@@ -175,7 +175,7 @@ def _powers_of_ten(highest: int) -> Array:
 class WholeDesign:
     """The columns of a design, the response last, as whole numbers: formed a block of rows at a time.
 
-    `scales` holds each column's unit (column = whole numbers * scale), `rounded` whether a column holds computed
+    `scales` holds each column's unit (column = whole numbers * scale), `computed` its factors of computed
     cells, `starts` where each column's limbs begin among all limbs (`weighted_starts`: of the columns times the
     weights). `weight` is the weights' column, or None.
     """
@@ -193,7 +193,7 @@ class WholeDesign:
         bits = [sum(self._whole[f].bits for f in _parts(factors)) for factors in self._factors]
         self.bits = [max(b, 1) for b in bits] + [max(response.bits, 1)]
         self.scales = [self._scale(factors) for factors in self._factors] + [response.scale]
-        self.rounded = [any(self._whole[f].rounded for f in _parts(factors)) for factors in self._factors]
+        self.computed = [frozenset(f for f in _parts(factors) if self._whole[f].rounded) for factors in self._factors]
         self.starts = _starts(self.bits)
         extra = self.weight.bits if self.weight else 0
         self.weighted_starts = _starts([b + extra for b in self.bits])

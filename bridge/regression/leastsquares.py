@@ -47,13 +47,14 @@ def solve(spec: ModelSpec, observations: Observations) -> Solved:
             quick = blocked.fit(spec, observations, layout.columns, y, weights)
             if quick is not None and quick.digits is not None and quick.digits >= LEAST_DIGITS:
                 return Solved(quick, (), layout)
-        x = design.matrix(layout.columns, observations) if quick is None else quick.x
+        with np.errstate(over="ignore"):  # looked for in the next line
+            x = design.matrix(layout.columns, observations) if quick is None else quick.x
         _check_finite(x, layout.columns)
         return Solved(*exact_fit.fit(spec, observations, layout, x, y, weights), layout)
 
 
 def _check_finite(x: Array, columns: tuple[DesignColumn, ...]) -> None:
     for j, column in enumerate(columns):
-        if not np.isfinite(np.dot(x[:, j], x[:, j])):
-            index = int(np.argmax(np.abs(x[:, j])))
+        if not (np.isfinite(x[:, j].max()) and np.isfinite(x[:, j].min())):
+            index = int(np.argmin(np.isfinite(x[:, j])))
             raise OutOfDomain(f"{column.label} is too large a number", column.factors[0].column, index)
