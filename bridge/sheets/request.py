@@ -252,15 +252,19 @@ class _Page:
         """The rows to answer in: those of the last save, and free ones below; notes in the way move down."""
         assert self.grid.status_header is not None
         rows = [row.row for row in self.grid.status_rows][:count]
-        used = {row for row, _ in self.values}
+        used = self._used_rows()
         at = max(rows, default=self.grid.status_header) + 1
         while len(rows) < count:
             if at in used:
                 self._move_down(at)
-                used = {row for row, _ in self.values}
+                used = self._used_rows()
             rows.append(at)
             at += 1
         return rows
+
+    def _used_rows(self) -> set[int]:
+        """Rows in which something stands under the labels, the facts or the models; notes beside do not count."""
+        return {row for row, column in self.values if column in self._between()}
 
     def _move_down(self, row: int) -> None:
         def moved(at: Position) -> Position:

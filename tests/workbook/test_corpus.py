@@ -81,7 +81,10 @@ def compared(path: Path) -> Iterator[str]:
         page = values[entry.name]
         if page.max_row * page.max_column > MOST_CELLS:
             continue
-        cells = book._cells(entry.name)
+        try:
+            cells = book._cells(entry.name)
+        except reading._Unreadable:
+            continue
         for row in page.iter_rows():
             for cell in row:
                 is_formula = formulas[entry.name].cell(cell.row, cell.column).data_type == "f"
