@@ -14,8 +14,10 @@ from enum import StrEnum
 from pathlib import Path
 
 from bridge import __version__
+from bridge.files.fingerprint import Fingerprint
 from bridge.files.snapshot import read
 from bridge.files.writeback import Kind, write_back
+from bridge.files.writeback import Outcome as Put
 from bridge.messages import FileRefused, Problem, Severity, say
 from bridge.package.graft import graft
 from bridge.package.package import Package
@@ -62,6 +64,7 @@ class Report:
     models: tuple[ModelSheet, ...] = ()
     problems: tuple[Problem, ...] = ()
     stages: Mapping[str, float] = field(default_factory=dict)
+    fingerprint: Fingerprint | None = None
 
     @property
     def all_problems(self) -> tuple[Problem, ...]:
@@ -126,10 +129,26 @@ def fit_workbook(
                 put = write_back(snapshot, made.data, while_open)
             if put.kind != Kind.CHANGED:
                 outcome = made.outcome if put.kind == Kind.WRITTEN else Outcome(put.kind.value)
-                return _report(path, replace(made, outcome=outcome), stages, put.note)
+                return _report(path, replace(made, outcome=outcome), stages, put)
         return _report(path, replace(made, outcome=Outcome.CHANGED), stages)
     except FileRefused as refusal:
         return Report(path, Outcome.REFUSED, refusal.problem.text, (), (refusal.problem,), stages.seconds)
+
+
+def fit_file(path: str, while_open: str, note: str) -> Mapping[str, object]:
+    """The same for the watcher's workers: plain values in and out. Raises FileRefused, so that the watcher is told."""
+    report = fit_workbook(path, while_open, note)
+    if report.outcome is Outcome.REFUSED:
+        raise FileRefused(report.problems[0])
+    fitted = [model.name for model in report.models if model.result is not None]
+    refused = [model.name for model in report.models if model.result is None]
+    said = [f"fitted {', '.join(fitted)}"] * bool(fitted) + [f"not fitted: {', '.join(refused)}"] * bool(refused)
+    return {
+        "outcome": report.outcome.value,
+        "message": "; ".join([*said, *([report.message] if report.message else [])]),
+        "fingerprint": report.fingerprint,
+        "stages": dict(report.stages),
+    }
 
 
 def remake(
@@ -253,8 +272,8 @@ def _read_back(sheet: Sheet) -> RawSheet:
     return RawSheet(sheet.title or sheet.name, values, formulas)
 
 
-def _report(path: Path, made: Made, stages: Stages, message: str = "") -> Report:
-    return Report(path, made.outcome, message, made.models, made.problems, stages.seconds)
+def _report(path: Path, made: Made, stages: Stages, put: Put = Put(Kind.WRITTEN)) -> Report:  # noqa: B008 (frozen)
+    return Report(path, made.outcome, put.note, made.models, made.problems, stages.seconds, put.fingerprint)
 
 
 # --- handing on --------------------------------------------------------------------------------

@@ -23,7 +23,9 @@ def main() -> int:
         [sys.executable, "-m", "pytest", "-n", "2", "--dist", "loadfile", *sys.argv[1:]],
     )
     for check in checks:
-        print("+", " ".join(Path(word).name if word in (sys.executable, check[0]) else word for word in check), flush=True)
+        print(
+            "+", " ".join(Path(word).name if word in (sys.executable, check[0]) else word for word in check), flush=True
+        )
         ended = subprocess.run(check, cwd=ROOT, check=False)
         if ended.returncode:
             return ended.returncode
