@@ -1,4 +1,4 @@
-"""The real watcher on a demo workbook: an edit is noticed, the numbers are right, a save without change is left alone."""
+"""The real watcher on a demo workbook: an edit is noticed, numbers are right, a save without change left alone."""
 
 from __future__ import annotations
 
