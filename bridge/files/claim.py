@@ -140,12 +140,16 @@ def _owner_at(path: Path) -> owner.Owner | None:
 
 
 def _dead(path: Path, holder: owner.Owner | None) -> bool:
-    if holder is not None and owner.alive(holder) is False:
+    lives = None if holder is None else owner.alive(holder)
+    if lives is False:
         return True
     if holder is not None and owner.is_me(holder) and path not in _mine:
         return True  # left behind in a folder that was moved while we held it
     try:
-        return time_there(path.parent) - path.stat().st_mtime > (EXPIRY if holder else _UNREADABLE_EXPIRY)
+        renewed = path.stat().st_mtime
+        if lives and time.time() - renewed < EXPIRY:
+            return False  # no need to ask the server for its time
+        return time_there(path.parent) - renewed > (EXPIRY if holder else _UNREADABLE_EXPIRY)
     except OSError:
         return False
 

@@ -13,10 +13,11 @@ def saved(number: int, padding: int = 0) -> bytes:
     """What a user's save number `number` writes; `padding` bytes that do not compress make it larger."""
     made = io.BytesIO()
     with zipfile.ZipFile(made, "w") as book:
-        book.writestr("xl/workbook.xml", WORKBOOK_XML)
-        book.writestr("number.txt", str(number))
+        # ZipInfo's fixed date, so that the same number gives the same bytes.
+        book.writestr(zipfile.ZipInfo("xl/workbook.xml"), WORKBOOK_XML)
+        book.writestr(zipfile.ZipInfo("number.txt"), str(number))
         if padding:
-            book.writestr("xl/media/picture.bin", number.to_bytes(8, "little") * (padding // 8))
+            book.writestr(zipfile.ZipInfo("xl/media/picture.bin"), number.to_bytes(8, "little") * (padding // 8))
     return made.getvalue()
 
 
@@ -24,7 +25,7 @@ def with_result(data: bytes) -> bytes:
     """The same with a result made from it."""
     made = io.BytesIO(data)
     with zipfile.ZipFile(made, "a") as book:
-        book.writestr("result.txt", book.read("number.txt"))
+        book.writestr(zipfile.ZipInfo("result.txt"), book.read("number.txt"))
     return made.getvalue()
 
 

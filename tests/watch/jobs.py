@@ -14,7 +14,9 @@ import time
 import zipfile
 from collections.abc import Mapping
 from pathlib import Path
+from typing import Any
 
+from bridge.files import swap_linux
 from bridge.files.snapshot import read
 from bridge.files.writeback import write_back
 
@@ -68,22 +70,24 @@ def repeat(path: str, while_open: str, note: str) -> Mapping[str, object]:
     """The usual job."""
     for _ in range(5):
         snapshot = read(path)
-        if result_of(snapshot.data) == users_digest(snapshot.data) and not note:
+        made_from = users_digest(snapshot.data)
+        if result_of(snapshot.data) == made_from and not note:
             return {"outcome": "unchanged", "fingerprint": snapshot.fingerprint}
         put = write_back(snapshot, with_result(snapshot.data, note), while_open)
         if put.kind != "changed":
             outcome = "fitted" if put.kind == "written" else put.kind.value
-            return {"outcome": outcome, "message": put.note, "fingerprint": put.fingerprint}
+            return {"outcome": outcome, "message": put.note, "fingerprint": put.fingerprint, "made_from": made_from}
     return {"outcome": "changed"}
 
 
 def repeat_counting(path: str, while_open: str, note: str) -> Mapping[str, object]:
-    """The usual job, which also notes each write it did: one line per write in a file beside the folder."""
+    """The usual job, which also writes down each write: a line with the workbook's name and what it was made from."""
     answer = repeat(path, while_open, note)
     if answer["outcome"] == "fitted":
-        line = f"{Path(path).name} {result_of(Path(path).read_bytes()) or ''}\n"
-        with (Path(os.environ["SAVEFIT_TEST_WRITES"])).open("a") as file:
-            file.write(line)
+        line = f"{Path(path).parent.name}/{Path(path).name} {answer['made_from']}\n"
+        handle = os.open(os.environ["SAVEFIT_TEST_WRITES"], os.O_WRONLY | os.O_CREAT | os.O_APPEND)
+        os.write(handle, line.encode())
+        os.close(handle)
     return answer
 
 
@@ -117,25 +121,18 @@ def broken(path: str, while_open: str, note: str) -> Mapping[str, object]:
 
 def faulty(path: str, while_open: str, note: str) -> Mapping[str, object]:
     """The usual job on a system that fails as the workbook's name says: `ENOSPC.xlsx`."""
-    from bridge.files import prepare, swap_linux
-
-    wanted = Path(path).stem
-    code = getattr(errno, wanted, 0)
+    code = getattr(errno, Path(path).stem, 0)
 
     def fail(*_: object) -> None:
         raise OSError(code, os.strerror(code))
 
-    if wanted == "ENOSPC":
-        os.posix_fallocate, restore = fail, os.posix_fallocate
-        try:
-            return repeat(path, while_open, note)
-        finally:
-            os.posix_fallocate = restore
-    if code:
-        swap_linux.exchange, kept = fail, swap_linux.exchange
-        try:
-            return repeat(path, while_open, note)
-        finally:
-            swap_linux.exchange = kept
-    assert prepare
-    return repeat(path, while_open, note)
+    if not code:
+        return repeat(path, while_open, note)
+    place: Any = os if code == errno.ENOSPC else swap_linux
+    name = "posix_fallocate" if code == errno.ENOSPC else "exchange"
+    kept = getattr(place, name)
+    setattr(place, name, fail)
+    try:
+        return repeat(path, while_open, note)
+    finally:
+        setattr(place, name, kept)
