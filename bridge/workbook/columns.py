@@ -112,11 +112,10 @@ def _grow(column: _Growing, cells: Sequence[object]) -> set[type]:
     if str in kinds:
         known = column.known
         texts = [(known.get(cell) or _seen(cell, known)) if type(cell) is str else None for cell in cells]
-        unseen = texts.count(None)
-        if unseen:
-            seen = np.fromiter((text is not None for text in texts), np.bool_, len(cells))
+        if None in texts or "" in texts:
+            seen = np.fromiter(map(bool, texts), np.bool_, len(cells))
             state[(state == State.TEXT) & ~seen] = State.BLANK
-        texts = texts if unseen < len(cells) else len(cells)
+        texts = texts if texts.count(None) < len(cells) else len(cells)
     column.numbers.append(_numbers(cells, kinds))
     column.state.append(state)
     column.texts.append(texts)
@@ -138,9 +137,14 @@ def _number(cell: object) -> float:
 
 
 def _seen(text: str, known: dict[str, str]) -> str | None:
-    """A text met for the first time, to be one object with its equals; None where only spaces would be seen."""
-    if not text or text.isspace():
+    """A text met for the first time, to be one object with its equals; empty where only spaces would be seen.
+
+    None for the empty text, which is what the reader says of a blank cell.
+    """
+    if not text:
         return None
+    if text.isspace():
+        return ""
     if len(known) < _MOST_SHARED:
         known[text] = text
     return text

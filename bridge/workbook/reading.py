@@ -329,7 +329,13 @@ def _data_column(column: CellColumn, rows: NDArray[np.int64], index: int, name: 
     state = column.state[rows]
     numbers = column.numbers[rows]
     numbers[(state != State.NUMBER) & (state != State.DATE) & (state != State.YES_NO)] = np.nan
-    return DataColumn(name, index, kinds.kind(state), numbers, _texts(column.texts, rows), state, unit)
+    texts = _texts(column.texts, rows)
+    return DataColumn(name, index, kinds.kind(state), numbers, texts, state, unit, _filled(column, int(rows[0])))
+
+
+def _filled(column: CellColumn, first: int) -> int:
+    """Cells from row `first` to the end of the sheet that a spreadsheet counts as filled, invisible texts included."""
+    return int(np.count_nonzero(column.state[first:] != State.BLANK)) + column.texts[first:].count("")
 
 
 def _texts(texts: tuple[str | None, ...], rows: NDArray[np.int64]) -> tuple[str | None, ...]:

@@ -41,7 +41,8 @@ class DataColumn:
     `numbers` (n,): the number, a date's serial, 1/0 for yes/no; NaN where there is none.
     `texts`: per row the text, or None; the tuple is empty for a column without any text. An empty text in a BLANK row
     is a cell that holds a text in which nothing can be seen (spreadsheet programs count such a cell as filled).
-    `state` (n,) holds a `State` per row.
+    `state` (n,) holds a `State` per row. `filled` counts the cells from the first data row to the end of the sheet
+    that hold anything, whatever stands under the table included; None where that is not known.
     """
 
     name: str
@@ -51,6 +52,7 @@ class DataColumn:
     texts: tuple[str | None, ...]
     state: NDArray[np.uint8]
     unit: str | None = None
+    filled: int | None = None
 
 
 @dataclass(frozen=True, slots=True)

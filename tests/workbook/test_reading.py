@@ -81,7 +81,8 @@ def test_every_state_is_told() -> None:
         State.ERROR, State.NUMBER, State.NO_VALUE,
     ]  # fmt: skip
     assert [State(code) for code in found.state.tolist()] == expected
-    assert found.texts == (None, "", None, None, "", None, "oak ", None, None, None, None)
+    assert found.texts == (None, "", None, None, "", "", "oak ", None, None, None, None)
+    assert found.filled == 10  # all but the blank cell
     np.testing.assert_array_equal(found.numbers[[2, 3, 9]], [2.0, 1.0, 1e-300])
     assert np.isnan(found.numbers[[0, 1, 4, 5, 6, 7, 8, 10]]).all()
     assert found.index == 1
