@@ -151,8 +151,8 @@ def matrix(
 ) -> Array:
     """The values of the columns for the rows asked for, shape (k, len(columns)), in doubles; written to `out` if given.
 
-    Laid out column after column. Raises OutOfDomain with the column and the index of the first row where a shape
-    cannot be taken.
+    Laid out column after column. Raises OutOfDomain with the column and the index, among the rows asked for, of the
+    first where a shape cannot be taken.
     """
     count = len(range(*rows.indices(observations.n))) if isinstance(rows, slice) else len(rows)
     values = np.empty((count, len(columns)), order="F") if out is None else out
@@ -184,13 +184,28 @@ def shaped(x: Array, shape: Shape, column: str) -> Array:
     """x under a shape, in doubles, as a spreadsheet's LN, SQRT and 1/x give it. Raises OutOfDomain."""
     if shape is Shape.AS_IS:
         return x
-    outside = {Shape.LOG: x <= 0, Shape.ROOT: x < 0, Shape.RECIPROCAL: x == 0}[shape]
-    if outside.any():
-        index = int(np.argmax(outside))
-        raise OutOfDomain(f"{shape.value} of {x[index]!r} in {column}", column, index)
+    _within_domain(x, shape, column)
     if shape is Shape.LOG:
         return np.log(x)
     return np.sqrt(x) if shape is Shape.ROOT else 1.0 / x
+
+
+def check_domain(columns: Sequence[DesignColumn], observations: Observations) -> None:
+    """Raises OutOfDomain with the column and the index of the first row where a shape cannot be taken."""
+    for column in columns:
+        for factor in column.factors:
+            if factor.kind in _SHAPES:
+                _within_domain(observations.numbers(factor.column), Shape(factor.kind), factor.column)
+
+
+_SHAPES = (Shape.LOG, Shape.ROOT, Shape.RECIPROCAL)
+
+
+def _within_domain(x: Array, shape: Shape, column: str) -> None:
+    outside = {Shape.LOG: np.less_equal, Shape.ROOT: np.less, Shape.RECIPROCAL: np.equal}[shape](x, 0)
+    if outside.any():
+        index = int(np.argmax(outside))
+        raise OutOfDomain(f"{shape.value} of {float(x[index])!r} in {column}", column, index)
 
 
 def response(spec: ModelSpec, observations: Observations) -> Array:
@@ -206,5 +221,5 @@ def weights(spec: ModelSpec, observations: Observations) -> Array | None:
     bad = ~(np.isfinite(values) & (values > 0))
     if bad.any():
         index = int(np.argmax(bad))
-        raise BadWeight(f"weight {values[index]!r} in {spec.weight}", spec.weight, index)
+        raise BadWeight(f"weight {float(values[index])!r} in {spec.weight}", spec.weight, index)
     return values

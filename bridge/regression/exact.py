@@ -16,6 +16,7 @@ from math import ceil, log10
 import numpy as np
 from numpy.typing import NDArray
 
+from bridge.regression.errors import NothingToFit
 from bridge.regression.rank import independent
 from bridge.regression.results import Factor
 
@@ -100,9 +101,11 @@ def solve(problem: Problem) -> Solution:
     """The least-squares solution on the independent columns.
 
     Columns that depend on earlier ones are left out: exactly, or, where computed cells are involved, to within those
-    cells' rounding.
+    cells' rounding. Raises NothingToFit where none is left.
     """
     kept, fits_exactly = independent(problem.cross_products)
+    if not kept:
+        raise NothingToFit("every column is 0 in every row")
     close: list[Dependence] = []
     while True:
         done, scaled_inverse, condition, digits = _eliminated(problem, kept, fits_exactly)
@@ -170,10 +173,9 @@ def _eliminate(matrix: Objects, p: int) -> _Elimination:
 
 def _inverse_transposed(factors: Objects, p: int) -> Objects:
     inverse = np.full((p, p), Decimal(0), dtype=object)
-    for i in range(p):
-        if i:
-            inverse[:i, i] = -inverse[:i, :i].dot(factors[i, :i])
-        inverse[i, i] = Decimal(1)
+    np.fill_diagonal(inverse, Decimal(1))
+    for k in range(p - 1):
+        inverse[: k + 1, k + 1 :] -= np.multiply.outer(inverse[: k + 1, k], factors[k + 1 : p, k])
     return inverse
 
 

@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 from bridge.regression import exact, replicates, sums
 from bridge.regression.crossproducts import combinations, cross_products
 from bridge.regression.design import Layout
-from bridge.regression.errors import NothingToFit, TooFewRows
+from bridge.regression.errors import TooFewRows
 from bridge.regression.integers import WholeDesign, from_computed, from_typed
 from bridge.regression.kernel import Kernel, Sums
 from bridge.regression.results import Alias, DesignColumn
@@ -53,8 +53,6 @@ def fit(
         exact.Problem(cross_products(whole), whole.scales, weight_scale, whole.computed, spec.intercept)
     )
     kept = list(solution.kept)
-    if not kept:
-        raise NothingToFit("every column is 0 in every row")
     if observations.n <= len(kept):
         raise TooFewRows(observations.n, len(layout.columns))
     columns = tuple(layout.columns[j] for j in kept)

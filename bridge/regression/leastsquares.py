@@ -40,8 +40,9 @@ def solve(spec: ModelSpec, observations: Observations) -> Solved:
     y = design.response(spec, observations)
     weights = design.weights(spec, observations)
     if not y.any() or (spec.intercept and (y == y[0]).all()):
-        raise ConstantResponse(f"{spec.response} is {y[0]!r} in every row", spec.response)
+        raise ConstantResponse(f"{spec.response} is {float(y[0])!r} in every row", spec.response)
     quick = None
+    design.check_domain(layout.columns, observations)
     with one_blas_thread():
         if observations.n > EXACT_ROWS:
             quick = blocked.fit(spec, observations, layout.columns, y, weights)

@@ -106,6 +106,8 @@ def fit(observations=BOATS, response="hours", terms=LINE, **more):
 def test_what_cannot_be_fitted_names_column_and_row():
     with pytest.raises(NothingToFit):
         fit(terms=(), intercept=False)
+    with pytest.raises(NothingToFit):
+        fit(Observations({**BOATS.columns, "length": np.zeros(6)}, 6), intercept=False)
     with pytest.raises(UnknownBase) as error:
         fit(terms=(CategoryTerm("hull", base="brick"),))
     assert error.value.column == "hull"
