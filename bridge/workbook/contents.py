@@ -37,21 +37,28 @@ class Contents:
 
 @dataclass(frozen=True, slots=True)
 class NewCase:
-    """One line the user typed on `fit estimates`: its name, its entries by data column name, and the formulas of those
-    that are formulas."""
+    """One line the user typed on `fit estimates`: its name, and its entries by data column name, all as typed.
 
-    name: str
+    `formulas` holds the formula of each entry that is one, `dates` the entries that show their number as a date; the
+    name of the case goes by the empty text there.
+    """
+
+    name: Scalar
     entries: Mapping[str, Scalar]
     formulas: Mapping[str, str] = field(default_factory=dict)
+    dates: frozenset[str] = frozenset()
 
 
 @dataclass(frozen=True, slots=True)
 class Choices:
-    """What the user chose on `fit estimates`: the case and model to explain, and readings to trace back, by model."""
+    """What the user chose on `fit estimates`: the case and model to explain, and readings to trace back, by model.
 
-    case: str | None = None
+    A reading is what was read and its weight (None: none was typed).
+    """
+
+    case: Scalar | None = None
     model: str = ""
-    readings: Mapping[str, tuple[float, ...]] = field(default_factory=dict)
+    readings: Mapping[str, tuple[tuple[float, float | None], ...]] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, slots=True)

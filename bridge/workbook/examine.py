@@ -7,13 +7,15 @@ The other thresholds are common practice.
 from __future__ import annotations
 
 from collections import Counter
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterator, Mapping, Sequence
+from dataclasses import replace
+from statistics import NormalDist
 
 import numpy as np
 from numpy.typing import NDArray
 
 from bridge.messages import Problem, say
-from bridge.regression.spec import Shape
+from bridge.regression.spec import Levels, Observations, Shape
 from bridge.workbook import kinds
 from bridge.workbook.columns import day_of
 from bridge.workbook.levels import as_levels
@@ -39,32 +41,38 @@ def examine(table: Table, models: Sequence[ModelRequest]) -> tuple[Problem, ...]
         for use in uses(table, model):
             used.setdefault((use.name, use.as_levels, use.shape), use)
     rows = np.arange(len(table.rows))
-    found = [*_gaps_in_cells(table, list(used.values())), *_findings(table, list(used.values()), rows)]
+    found = [*_gaps_in_cells(table, list(used.values())), *_findings(table, list(used.values()), rows, {})]
     return tuple({finding.text: finding for finding in found}.values())
 
 
-def of_model(table: Table, asked: ModelRequest, columns: Sequence[Use], rows: Rows) -> list[Problem]:
-    """The same for one model's rows; blanks and errors are told with the rows left out."""
-    found = _findings(table, columns, rows)
-    return [say_again(finding, asked.name) for finding in found]
+def of_model(
+    table: Table, asked: ModelRequest, columns: Sequence[Use], rows: Rows, observations: Observations
+) -> list[Problem]:
+    """The same for one model's rows, whose values are at hand; blanks and errors are told with the rows left out."""
+    known = {name: column for name, column in observations.columns.items() if isinstance(column, Levels)}
+    return [replace(finding, model=asked.name) for finding in _findings(table, columns, rows, known)]
 
 
-def say_again(finding: Problem, model: str) -> Problem:
-    """A finding told to a model."""
-    return Problem(finding.key, finding.severity, finding.text, finding.cell, model)
-
-
-def _findings(table: Table, columns: Sequence[Use], rows: Rows) -> list[Problem]:
-    if not len(rows):
-        return []
+def _findings(table: Table, columns: Sequence[Use], rows: Rows, known: Mapping[str, Levels]) -> list[Problem]:
+    """`known` are the levels of columns whose `rows` are all filled, where they have been made already."""
     found: list[Problem] = []
+    if not len(rows):
+        return found
+    complete = {}
     for use in columns:
         own = rows[use.usable()[rows]]
         if not len(own):
             continue
-        found += _of_levels(table, use, own) if use.as_levels else _of_numbers(table, use, own)
-    found += _total_row(table, columns, rows)
-    found += _repeated_rows(table, columns, rows)
+        if not use.as_levels:
+            found += _of_numbers(table, use, own)
+            continue
+        levels = known.get(use.name) or as_levels(use.column, own, table.date1904)
+        found += _of_levels(table, use, own, levels)
+        if len(own) == len(rows):
+            complete[use.name] = levels
+    found += _total_row(table, rows)
+    if all(use.name in complete or use.usable()[rows].all() for use in columns):
+        found += _repeated_rows(table, columns, rows, complete)
     return found
 
 
@@ -89,7 +97,7 @@ def _gaps_in_cells(table: Table, columns: Sequence[Use]) -> Iterator[Problem]:
             yield say("date-as-number", column=use.name)
 
 
-def _total_row(table: Table, columns: Sequence[Use], rows: Rows) -> Iterator[Problem]:
+def _total_row(table: Table, rows: Rows) -> Iterator[Problem]:
     """A last row that sums up the others."""
     last = int(rows[-1])
     if last != len(table.rows) - 1:
@@ -101,20 +109,21 @@ def _total_row(table: Table, columns: Sequence[Use], rows: Rows) -> Iterator[Pro
             return
 
 
-def _repeated_rows(table: Table, columns: Sequence[Use], rows: Rows) -> Iterator[Problem]:
+def _repeated_rows(table: Table, columns: Sequence[Use], rows: Rows, levels: Mapping[str, Levels]) -> Iterator[Problem]:
     """Rows that agree in every column used."""
-    if len(rows) < 2 or not columns:
-        return
     key = np.zeros(len(rows), dtype=np.uint64)
     with np.errstate(over="ignore"):
         for use in columns:
-            key = (key ^ _fingerprint(table, use, rows)) * np.uint64(0x9E3779B97F4A7C15)
+            key = (key ^ _bits(use, rows, levels)) * np.uint64(0x9E3779B97F4A7C15)
             key ^= key >> np.uint64(29)
+    ordered = np.sort(key)
+    if not columns or not (ordered[1:] == ordered[:-1]).any():
+        return
     _, first, inverse = np.unique(key, return_index=True, return_inverse=True)
     original = first[inverse.ravel()]  # of each row, the first one like it
     extra = np.flatnonzero(original != np.arange(len(rows)))
-    if not len(extra) or len(extra) > len(rows) // 2:
-        return  # nothing repeats, or nearly everything does, as in a designed trial
+    if len(extra) > len(rows) // 2:
+        return  # nearly everything repeats, as in a designed trial
     again = int(extra[0])
     first_row, second_row = (int(table.rows[rows[at]]) for at in (original[again], again))
     count = len(extra) + len(np.unique(original[extra]))
@@ -122,17 +131,17 @@ def _repeated_rows(table: Table, columns: Sequence[Use], rows: Rows) -> Iterator
     yield say("found-repeated-rows", cell=cell, first=first_row, second=second_row, count=count)
 
 
-def _fingerprint(table: Table, use: Use, rows: Rows) -> NDArray[np.uint64]:
-    if use.as_levels and use.column.texts:
-        return as_levels(use.column, rows, table.date1904).codes.astype(np.uint64)
+def _bits(use: Use, rows: Rows, levels: Mapping[str, Levels]) -> NDArray[np.uint64]:
+    """A column's values as whole numbers that are equal where the values are."""
+    if use.as_levels:
+        return levels[use.name].codes.astype(np.uint64)
     return (use.column.numbers[rows] + 0.0).view(np.uint64)
 
 
 # --- levels ------------------------------------------------------------------------------------
 
 
-def _of_levels(table: Table, use: Use, rows: Rows) -> Iterator[Problem]:
-    levels = as_levels(use.column, rows, table.date1904)
+def _of_levels(table: Table, use: Use, rows: Rows, levels: Levels) -> Iterator[Problem]:
     if len(levels.names) > _MOST_LEVELS:
         return
     counts = np.bincount(levels.codes, minlength=len(levels.names))
@@ -178,11 +187,10 @@ def _of_numbers(table: Table, use: Use, rows: Rows) -> Iterator[Problem]:
         yield from _gaps_in_order(table, use, rows, numbers)
         return
     if len(rows) >= _LEAST_FOR_CONSTANT and use.words != "the weight":
-        values, counts = np.unique(numbers, return_counts=True)
-        most = int(counts.argmax())
-        if len(values) > 1 and counts[most] >= _NEARLY_ALL * len(rows):
-            value = kinds.number_text(float(values[most]))
-            yield from _nearly_constant(table, use, rows, value, int(counts[most]), numbers != values[most])
+        middle = float(np.median(numbers))  # what nearly all rows hold is also what the middle one holds
+        same = int(np.count_nonzero(numbers == middle))
+        if same >= _NEARLY_ALL * len(rows):
+            yield from _nearly_constant(table, use, rows, kinds.number_text(middle), same, numbers != middle)
             return
     yield from _far_values(table, use, rows, _shaped(numbers, use.shape))
 
@@ -203,7 +211,7 @@ def _far_values(table: Table, use: Use, rows: Rows, numbers: NDArray[np.float64]
     if not spread > 0:
         return
     beyond = np.maximum(low - numbers, numbers - high)
-    far = np.flatnonzero(beyond > _FENCE * spread)
+    far = np.flatnonzero(beyond > _fence(len(rows)) * spread)
     if not len(far):
         return
     farthest = far[np.argsort(-beyond[far], kind="stable")]
@@ -211,6 +219,15 @@ def _far_values(table: Table, use: Use, rows: Rows, numbers: NDArray[np.float64]
     more = "" if len(far) == 1 else f" (and {len(far) - 1} more)"
     value = kinds.cell_text(table, use.column, at)
     yield say("found-far-value", cell=data_cell(table, use.column, at), column=use.name, value=value, more=more)
+
+
+def _fence(n: int) -> float:
+    """Interquartile ranges beyond the quartiles: three, and more where so many rows would reach that far by chance.
+
+    For normal values a quartile lies 0.6745 SD from the middle; one case in twenty such columns may lie beyond.
+    """
+    farthest = NormalDist().inv_cdf(1 - 0.025 / n)
+    return max(_FENCE, (farthest - 0.6745) / 1.349)
 
 
 def _nearly_constant(

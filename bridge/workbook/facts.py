@@ -66,9 +66,16 @@ def _shown(table: Table, kind: Kind, value: float) -> str:
 
 
 def _different(table: Table, column: DataColumn) -> str:
-    counted = levels(table, column)
-    if len(counted) > _MOST_SHOWN:
-        all_different = len(counted) == int(np.count_nonzero(column.state != State.BLANK))
-        return f"{len(counted)} different" if all_different else f"{len(counted)} levels"
-    names = ", ".join(level for level, _ in sorted(counted.items(), key=lambda pair: (-pair[1], pair[0])))
-    return names if len(names) <= _MOST_LETTERS else f"{len(counted)} level{'s' if len(counted) > 1 else ''}"
+    names = _distinct(table, column)
+    if len(names) > _MOST_SHOWN:
+        all_different = len(names) == int(np.count_nonzero(column.state != State.BLANK))
+        return f"{len(names)} different" if all_different else f"{len(names)} levels"
+    listed = ", ".join(sorted(names))
+    return listed if len(listed) <= _MOST_LETTERS else f"{len(names)} level{'s' if len(names) > 1 else ''}"
+
+
+def _distinct(table: Table, column: DataColumn) -> set[str]:
+    others = np.flatnonzero(np.isin(column.state, (State.NUMBER, State.DATE, State.YES_NO)))
+    _, first = np.unique(column.numbers[others], return_index=True)
+    shown = {kinds.level_text(column, int(others[at]), table.date1904) or "" for at in first.tolist()}
+    return shown | {text for text in set(column.texts) if text}

@@ -23,7 +23,7 @@ def as_levels(column: DataColumn, rows: NDArray[np.intp], date1904: bool = False
 def _from_texts(texts: list[str]) -> Levels:
     names = tuple(sorted(set(texts)))
     codes = {name: code for code, name in enumerate(names)}
-    return Levels(np.fromiter((codes[text] for text in texts), np.intp, len(texts)), names)
+    return Levels(np.array([codes[text] for text in texts], dtype=np.intp), names)
 
 
 def _from_numbers(column: DataColumn, rows: NDArray[np.intp], date1904: bool) -> Levels:

@@ -49,7 +49,7 @@ def take(table: Table, asked: ModelRequest) -> tuple[Taken, Observations, tuple[
     for use in columns:
         taking.check_domain(use, rows)
     taking.check_model(spec, observations, rows)
-    taking.problems += examine.of_model(table, asked, columns, rows)
+    taking.problems += examine.of_model(table, asked, columns, rows, observations)
     taken = Taken(tuple(rows.tolist()), _left_out(table, asked, columns, kept, used))
     return taken, observations, most_useful_first(taking.problems)
 

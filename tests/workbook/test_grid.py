@@ -271,6 +271,7 @@ NOTE = st.text(st.characters(categories=["L", "N", "P"]), min_size=1, max_size=1
 def test_notes_beside_the_grid_survive_where_they_stand(notes: dict[tuple[int, int], str]) -> None:
     source = contents_once()
     page = typed(source, GOOD)
+    notes = {at: text for at, text in notes.items() if at[0] != page.row("column")}  # there it would name a model
     cells = page.cells | dict(notes)
     arranged = Typed(source, read(cells), cells).understood().grid.cells
     assert all(arranged[at] == text for at, text in notes.items())
