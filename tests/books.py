@@ -96,7 +96,7 @@ def _row(page: openpyxl.worksheet.worksheet.Worksheet, label: str) -> int:
 
 def _crossed_row(page: openpyxl.worksheet.worksheet.Worksheet, first: str, second: str) -> int:
     row = _row(page, "crossed") + 1
-    while page.cell(row, 1).value not in (None, first):
+    while (page.cell(row, 1).value, page.cell(row, 2).value) not in ((None, None), (first, second)):
         row += 1
     page.cell(row, 1).value, page.cell(row, 2).value = first, second
     return row

@@ -2,9 +2,9 @@
 
 For each column that a fitted model uses: how many numbers, their sum, their squares' sum and the sum of value times
 place (which two swapped rows change) against what they were, within 1e-13 of the sum of absolute terms, because
-programs add in different orders. Texts are counted place by place, level by level, exactly (EXACT minds the case). The
-cells right under the table must still be empty. For each model, every cell of its request must read as it did.
-Ranges move with the data, so renamed sheets, moved columns and rows inserted above change nothing.
+programs add in different orders. Texts are counted place by place, level by level, exactly (EXACT minds the case). As
+many cells as then must be filled down to the end of the sheet. For each model, every cell of its request must read as
+it did. Ranges move with the data: renamed sheets, moved columns and rows inserted above change nothing.
 
 The lines stand on `fit history`; the first line of every sheet, and the names `fit_A_seal`, read them.
 """
@@ -30,6 +30,7 @@ from bridge.workbook.tables import DataColumn, State, Table
 SAME, OTHER = "unchanged", "CHANGED"
 UNCHANGED = "data unchanged since this fit"
 CHANGED = "DATA HAVE CHANGED since this fit: save with the bridge running"
+FAR = 1_000_000  # as far down as filled cells are counted: to the end of the sheet, with room for rows put in above
 MOST_LEVELS = 120  # texts of a column that get a line of their own
 FIRST_ROW = 6  # of the lines on `fit history`, zero-based
 VERDICT = 6  # the verdicts' column there
@@ -151,7 +152,9 @@ def _used_columns(book: Book, name: str) -> list[str]:
 def _column_lines(table: Table, column: DataColumn, models: frozenset[str]) -> Iterator[Line]:
     first, last = int(table.rows[0]), int(table.rows[-1])
     cells = live.data_range(table, column, first, last)
-    below = live.data_range(table, column, last + 1, last + 1)
+    below = live.data_range(
+        table, column, *((first, max(FAR, last)) if column.filled is not None else (last + 1, last + 1))
+    )
     place = f"ROW({cells})-ROW({live.data_range(table, column, first, first)})+1"
     position = (table.rows - first + 1).astype(float)
     what = f"{column.name} ({table.sheet})"
@@ -169,8 +172,7 @@ def _number_line(
     x, at = column.numbers[counted], position[counted]
     errors = int(np.count_nonzero(column.state == State.ERROR))
     count = Formula(f"COUNT({cells})", int(counted.sum()))
-    filled = int(np.count_nonzero(column.state != State.BLANK))
-    tests = [f"COUNT({cells})={int(counted.sum())}", f"COUNTA({cells})={filled}", f"COUNTA({below})=0"]
+    tests = [f"COUNT({cells})={int(counted.sum())}", f"COUNTA({below})={column.filled or 0}"]
     shown = [count]
     if errors:
         # An error among the cells would make every sum an error: they are counted, and the rest summed past them.
