@@ -60,7 +60,7 @@ def _laid_out(book: Book) -> tuple[Sheet, dict[str, Span]]:
 def _block(paper: Paper, model: ModelSheet, result: ModelResult) -> Span:
     response = words.axis_title(model.table, result.spec.response, result.spec.response_shape)
     lines = len(result.anova.rows) + 8  # heading, headers, parts, notes
-    paper.room(min(lines * ROW_POINTS, _PAGE_POINTS), _PAGE_POINTS)
+    paper.room(lines * ROW_POINTS, _PAGE_POINTS)
     paper.heading(f"{model.name}  {response}, {words.form(result.spec)}")
     first = paper.row
     head = replace(style.HEADER, wrap=True)

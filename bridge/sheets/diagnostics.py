@@ -105,8 +105,11 @@ def _model(
     paper.heading(f"{model.name}  {response}, {words.form(result.spec)}")
     if result.search is not None:
         paper.paragraph(words.SEARCH_WARNING, 0, _LAST, replace(style.PARAGRAPH, bold=True))
-    _checks(paper, model, result)
-    _rows(paper, book, model, result)
+    if result.checks:
+        _checks(paper, model, result)
+        _rows(paper, book, model, result)
+    else:
+        paper.paragraph(readings.NO_RESIDUAL, 0, _LAST)
     _collinearity(paper, model, result)
     _folds(paper, model, result)
     _search(paper, model, result)
@@ -240,10 +243,11 @@ def _folds(paper: Paper, model: ModelSheet, result: ModelResult) -> None:
     first = True
     for fold in np.unique(found.fold_of).tolist():
         inside = found.fold_of == fold
-        miss = math.sqrt(float(np.mean((result.observed[inside] - found.predicted[inside]) ** 2)))
+        error = (result.observed - found.predicted)[inside & np.isfinite(found.predicted)]
+        miss = math.sqrt(float(np.mean(error**2))) if len(error) else math.nan
         looks = (_TEXT, _TEXT, _number("0"), _number(code))
         text = fold_words(result, unit) if first else ""
-        _line(paper, (f"fold {fold + 1}", None, int(inside.sum()), miss), looks, text, 4)
+        _line(paper, (f"fold {fold + 1}", None, int(inside.sum()), _known(miss)), looks, text, 4)
         first = False
     looks = (replace(_TEXT, bold=True), _TEXT, _number("0", bold=True), _number(code, bold=True))
     _line(paper, ("all folds together", None, result.fit.n, found.rmse), looks, "", 4)
@@ -262,6 +266,10 @@ def fold_words(result: ModelResult, unit: str) -> str:
     how = (
         "Whole groups were left out together." if found.grouped else "Each row was estimated from the folds without it."
     )
+    missing = int((~np.isfinite(found.predicted)).sum())
+    if missing:
+        rows = words.plural(missing, "row")
+        how += f" {rows} could not be: what sets {'it' if missing == 1 else 'them'} apart occurs in no other fold."
     search = " The search was done anew without each fold." if found.includes_search else ""
     return f"On rows it has not seen the model misses by {miss}{share}, root mean square. {how}{search}"
 

@@ -142,8 +142,8 @@ def sentence_number(value: float, digits: int = 3) -> str:
 
 def placed_number(value: float, uncertainty: float, digits: int = 2) -> str:
     """`value` in a sentence, to the decimal place at which `uncertainty` has `digits` significant digits."""
-    if not (math.isfinite(uncertainty) and uncertainty > 0) or not math.isfinite(value):
-        return sentence_number(value, 6)
+    if not (math.isfinite(uncertainty) and uncertainty > _ROUNDING * abs(value)) or not math.isfinite(value):
+        return plain_number(rounded(value, 6)) if math.isfinite(value) else sentence_number(value)
     places = digits - 1 - _exponent(uncertainty)
     kept = round(value, places)
     if kept != 0 and not _is_plain(kept):

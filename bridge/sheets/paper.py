@@ -12,6 +12,7 @@ from bridge.page.sheet import Block, DropDown, Highlight, Link, Merge, Sheet
 from bridge.sheets import measure, style
 
 ROW_POINTS = 15.0
+_HARDLY_BEGUN = 0.15
 
 
 @dataclass
@@ -110,8 +111,9 @@ class Paper:
             self.pages.append(self.row)
 
     def room(self, points: float, page: float) -> None:
-        """Begin a new page where `points` more would not go on one of `page` points."""
-        if self.points(self.pages[-1], self.row) + points > page:
+        """Begin a new page where `points` more do not go on one of `page` points any more, but on a new one would."""
+        used = self.points(self.pages[-1], self.row)
+        if points <= page < used + points and used > _HARDLY_BEGUN * page:
             self.new_page()
 
     def sheet(self, last_column: int, **rest: Any) -> Sheet:

@@ -24,6 +24,10 @@ VIF_SIGN, VIF_CLEAR = 5.0, 10.0
 INDEX_SIGN, INDEX_CLEAR = 10.0, 30.0
 SHARE = 0.5
 
+NO_RESIDUAL = (
+    "The fit leaves no residual, so there is nothing to check: perhaps the response is computed from the predictors."
+)
+
 
 @dataclass(frozen=True, slots=True)
 class Reading:
@@ -61,7 +65,7 @@ def checks(model: ModelSheet, result: ModelResult) -> tuple[Reading, ...]:
 def _check(model: ModelSheet, result: ModelResult, check: Check) -> Reading:
     name, speak = _SPEAKERS.get(check.key, (check.key, _unknown))
     if math.isnan(check.p):
-        said = _Said(words.sentence(check.note or "Not available for these rows"), 0)
+        said = _Said(words.sentence(check.note or "Not available for this model"), 0)
     else:
         said = speak(model, result, check)
         if check.note:
@@ -313,9 +317,12 @@ def alias(found: Alias, table: Table | None = None) -> str:
     """What an aliased column depends on, and what was done."""
     label = words.label_in(table, found.label)
     parts = [_product(coefficient, words.label_in(table, other)) for other, coefficient in found.depends_on]
-    made = " ".join(parts).lstrip("+ ") if parts else "constant"
+    made = " ".join(parts).removeprefix("+ ").replace("− ", "−", 1 if parts and parts[0].startswith("−") else 0)
     exactly = "exactly" if found.exact else "to within rounding"
-    return f"{label} says nothing that others do not say already ({exactly} {made}); it was left out of the fit."
+    return (
+        f"{label} says nothing that others do not say already: it is {exactly} {made or 'constant'}. "
+        "It was left out of the fit."
+    )
 
 
 def _product(coefficient: float, label: str) -> str:
@@ -348,5 +355,6 @@ def moves(model: ModelSheet, result: ModelResult, at: int) -> str:
     most = int(np.nanargmax(np.abs(dfbetas[at])))
     size = float(dfbetas[at, most])
     label = words.label_in(model.table, result.design.columns[most].label)
+    label = "the intercept" if label == "intercept" else label
     way = "falls" if size > 0 else "rises"
     return f"without it {label} {way} by {figures.sentence_number(abs(size), 2)} standard errors"

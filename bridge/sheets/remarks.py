@@ -1,8 +1,8 @@
 """What is odd about single rows, in words.
 
 Thresholds: a studentised residual beyond 3 (common practice); leverage above 3 p / n, or 0.999 and more (common
-practice); Cook's distance beyond the 10% point of F(p, n - p), strong beyond the 50% point (Cook 1977, as practised
-in textbooks); a Huber weight below one half (common practice).
+practice); Cook's distance beyond 4 / (n - p) (common practice) and the 10% point of F(p, n - p), strong beyond its 50%
+point (Cook 1977, as practised in textbooks); a Huber weight below one half (common practice).
 """
 
 from __future__ import annotations
@@ -92,4 +92,5 @@ def size(studentised: float) -> str:
 def _cook_points(n: int, p: int) -> tuple[float, float]:
     if n <= p:
         return float("inf"), float("inf")
-    return float(fdtri(p, n - p, 0.1)), float(fdtri(p, n - p, 0.5))
+    strong = float(fdtri(p, n - p, 0.5))
+    return min(max(float(fdtri(p, n - p, 0.1)), 4 / (n - p)), strong), strong

@@ -41,7 +41,7 @@ def case(model: ModelSheet, result: ModelResult) -> str | None:
     parts += [f"{words.name_in(model.table, column)} {level}" for column, level in common.items()]
     described = words.listing(parts, most=6)
     text = f"A middling case ({described}): about {words.with_unit(about, unit)}"
-    if not math.isfinite(float(made.case_low[0])):
+    if not math.isfinite(float(made.case_low[0])) or ends[0] == ends[1]:
         return f"{text}."
     return f"{text}; {round(100 * result.spec.level)} of 100 such cases should lie between {ends[0]} and {ends[1]}."
 

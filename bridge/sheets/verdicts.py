@@ -149,8 +149,8 @@ _ERRORS = {Errors.UNEVEN_SPREAD: "uneven spread", Errors.GROUPED: "grouped rows"
 
 def _effects(model: ModelSheet, result: ModelResult) -> list[str]:
     found = in_short.strongest(model, result, MOST_EFFECTS)
-    equal = ", all else equal" if any(in_short.GOES in phrase for phrase in found) else ""
-    return [words.sentence(words.listing(found) + equal)] if found else []
+    alone = len(result.spec.terms) < 2 or not any(in_short.GOES in phrase for phrase in found)
+    return [f"{words.capital(words.listing(found))}{'' if alone else ', all else equal'}."] if found else []
 
 
 def _middling(model: ModelSheet, result: ModelResult) -> list[str]:
@@ -172,7 +172,7 @@ def watch(models: Sequence[Fitted]) -> list[str]:
     said: dict[str, list[str]] = {}
     for model, result in models:
         concerns = sorted(_concerns(model, result), key=lambda concern: -concern.weight)[:MOST_CONCERNS]
-        for concern in concerns or [_Concern("None of the checks shows anything that stands out.", 0)]:
+        for concern in concerns or [_Concern("Nothing among the checks stands out.", 0)]:
             said.setdefault(concern.text, []).append(model.name)
     return [f"{words.listing(names, most=12)}: {text}" for text, names in said.items()]
 
@@ -181,6 +181,8 @@ def _concerns(model: ModelSheet, result: ModelResult) -> list[_Concern]:
     found = [_Concern(words.SEARCH_WARNING, 3)] if result.search is not None else []
     found += [_Concern(readings.alias(one, model.table), 3) for one in result.design.aliased]
     found += _few_rows(result)
+    if not result.checks:
+        found.append(_Concern(readings.NO_RESIDUAL, 3))
     found += [_Concern(r.text, r.weight) for r in readings.checks(model, result) if r.weight]
     found += _entangled(model, result)
     found += _digits(result)

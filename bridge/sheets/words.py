@@ -161,17 +161,16 @@ def axis_title(table: Table | None, name: str, shape: Shape = Shape.AS_IS) -> st
 
 # --- models ------------------------------------------------------------------------------------
 
-_FORMS = {Shape.AS_IS: "straight", Shape.LOG: "log", Shape.ROOT: "root", Shape.RECIPROCAL: "reciprocal"}
-
 
 def form(spec: ModelSpec) -> str:
     """The model's form in a few words: `straight`, `log - log`, `curved`, `straight with a bend`."""
     numbers = [term for term in spec.terms if isinstance(term, NumberTerm)]
-    shapes = {term.shape for term in numbers}
-    if spec.response_shape is Shape.AS_IS:
-        plain = "straight" if shapes <= {Shape.AS_IS} else f"straight - {_mixed(shapes)}"
-    else:
-        plain = f"{_FORMS[spec.response_shape]} - {_mixed(shapes)}"
+    right = _shapes({term.shape for term in numbers}) if numbers else "by level" if spec.terms else "mean alone"
+    plain = right
+    if spec.response_shape is not Shape.AS_IS:
+        plain = f"{spec.response_shape.value} - {right}"
+    elif right not in ("straight", "by level", "mean alone"):
+        plain = f"straight - {right}"
     extras = [
         text
         for text, there in (
@@ -179,7 +178,7 @@ def form(spec: ModelSpec) -> str:
             ("with a bend", any(term.bends for term in numbers)),
             ("crossed", bool(spec.crossed)),
             ("weighted", spec.weight is not None),
-            ("through zero", not spec.intercept),
+            ("through zero", not spec.intercept and len(numbers) == len(spec.terms)),
             ("resistant", spec.fit_by is FitBy.RESISTANT),
         )
         if there
@@ -193,8 +192,6 @@ def refusal(model: ModelSheet) -> str:
     return " ".join(said or [problem.text for problem in model.problems] or ["It was not fitted."])
 
 
-def _mixed(shapes: set[Shape]) -> str:
-    return listing(
-        [name for shape, name in _FORMS.items() if shape in shapes and shape is not Shape.AS_IS]
-        + (["straight"] if Shape.AS_IS in shapes or not shapes else [])
-    )
+def _shapes(shapes: set[Shape]) -> str:
+    curved = [shape.value for shape in Shape if shape in shapes and shape is not Shape.AS_IS]
+    return listing([*curved, "straight"] if Shape.AS_IS in shapes else curved)

@@ -13,12 +13,16 @@ from bridge.messages import Problem, Severity
 from bridge.regression.core import fit_model
 from bridge.regression.results import Nested
 from bridge.regression.spec import (
+    BackOn,
     CategoryTerm,
     CrossedTerm,
+    Errors,
+    FitBy,
     Levels,
     ModelSpec,
     NumberTerm,
     Observations,
+    Search,
     Shape,
 )
 from bridge.sheets.book import Book, ModelSheet
@@ -200,6 +204,38 @@ def far_names() -> Book:
 
 
 @cache
+def every_kind() -> Book:
+    """One model of each kind that can be asked for, an exact fit and a fit that hangs on a single row among them."""
+    random = np.random.default_rng(6)
+    n = 90
+    x, z = random.uniform(1, 9, n).round(2), random.uniform(2, 5, n).round(2)
+    c = [("north", "south", "west")[at] for at in random.integers(0, 3, n)]
+    c[7] = "island"
+    y = (12 + 3 * x + 0.4 * x**2 - 2 * z + random.normal(0, 2, n)).round(2)
+    y[40] += 30
+    columns = {"y": y, "exact": (1 + 2 * x).round(2), "x": x, "z": z, "c": c, "w": random.uniform(1, 4, n).round(1)}
+    columns |= {"t": np.arange(n) + 45000.0, "g": [f"g{at % 9}" for at in range(n)], "same": 2 * x - 1}
+    table = data_table("Kinds", columns)
+    x_, z_, c_ = NumberTerm("x"), NumberTerm("z"), CategoryTerm("c")
+    maybe = tuple(replace(term, candidate=True) for term in (x_, z_, c_))
+    specs = {
+        "weighted": ModelSpec("y", terms=(x_,), weight="w"),
+        "curved": ModelSpec("y", terms=(NumberTerm("x", degree=3), z_), order="t", errors=Errors.SERIAL),
+        "levels": ModelSpec("y", terms=(c_,), intercept=False),
+        "zero": ModelSpec("y", terms=(x_,), intercept=False, errors=Errors.UNEVEN_SPREAD),
+        "root": ModelSpec("y", Shape.ROOT, (NumberTerm("x", Shape.ROOT), NumberTerm("z", Shape.RECIPROCAL))),
+        "mean": ModelSpec("y"),
+        "exact": ModelSpec("exact", terms=(x_,)),
+        "alias": ModelSpec("y", terms=(x_, NumberTerm("same"))),
+        "resistant": ModelSpec("y", terms=(x_, z_), fit_by=FitBy.RESISTANT),
+        "searched": ModelSpec("y", terms=maybe, search=Search.BIC),
+        "grouped": ModelSpec("y", terms=(x_, z_), group="g", errors=Errors.GROUPED),
+        "crossed": ModelSpec("y", Shape.LOG, (x_, z_), (CrossedTerm("x", "z"),), back_on=BackOn.FITTED),
+    }
+    return book([model(name, spec, table) for name, spec in specs.items()])
+
+
+@cache
 def nothing_fitted() -> Book:
     """Two models, neither of them fitted."""
     one = yard().models[0]
@@ -216,5 +252,6 @@ BOOKS = {
     "forty levels": forty_levels,
     "five rows": five_rows,
     "far names": far_names,
+    "every kind": every_kind,
     "nothing fitted": nothing_fitted,
 }

@@ -89,6 +89,8 @@ def test_no_page_is_wider_than_a_laptop_screen_apart_from_the_rows(sheets):
 
 def test_no_sheet_speaks_in_missing_values(sheets):
     for sheet in sheets.values():
+        numbers = [value for value in map(layout.value_of, sheet.cells.values()) if isinstance(value, float)]
+        assert np.isfinite(numbers).all()
         for text in layout.texts(sheet):
             assert not {"nan", "NaN", "None", "inf"} & set(text.replace(",", " ").replace(".", " ").split()), text
 

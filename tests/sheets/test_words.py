@@ -97,7 +97,9 @@ def test_titles_do_not_spoil_codes(name, wanted):
             ModelSpec("y", Shape.ROOT, (CategoryTerm("c"), NumberTerm("x")), (CrossedTerm("c", "x"),)),
             "root - straight, crossed",
         ),
-        (ModelSpec("y", terms=(CategoryTerm("c"),), fit_by=FitBy.RESISTANT), "straight, resistant"),
+        (ModelSpec("y", terms=(CategoryTerm("c"),), fit_by=FitBy.RESISTANT), "by level, resistant"),
+        (ModelSpec("y", terms=(NumberTerm("x", Shape.RECIPROCAL),)), "straight - reciprocal"),
+        (ModelSpec("y", Shape.LOG), "log - mean alone"),
     ],
 )
 def test_forms_in_a_few_words(spec, wanted):
