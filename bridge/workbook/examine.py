@@ -56,7 +56,7 @@ def of_model(
 def _findings(table: Table, columns: Sequence[Use], rows: Rows, known: Mapping[str, Levels]) -> list[Problem]:
     """`known` are the levels of columns whose `rows` are all filled, where they have been made already."""
     found: list[Problem] = []
-    if not len(rows):
+    if not columns or not len(rows):
         return found
     complete = {}
     for use in columns:
@@ -117,7 +117,7 @@ def _repeated_rows(table: Table, columns: Sequence[Use], rows: Rows, levels: Map
             key = (key ^ _bits(use, rows, levels)) * np.uint64(0x9E3779B97F4A7C15)
             key ^= key >> np.uint64(29)
     ordered = np.sort(key)
-    if not columns or not (ordered[1:] == ordered[:-1]).any():
+    if not (ordered[1:] == ordered[:-1]).any():
         return
     _, first, inverse = np.unique(key, return_index=True, return_inverse=True)
     original = first[inverse.ravel()]  # of each row, the first one like it

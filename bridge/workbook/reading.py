@@ -5,6 +5,7 @@ from __future__ import annotations
 import re
 from collections.abc import Callable, Iterable, Sequence
 from concurrent.futures import ThreadPoolExecutor
+from functools import cached_property
 from io import BytesIO
 from typing import TypeVar
 
@@ -42,11 +43,15 @@ class _Unreadable(Exception):
 def read(data: bytes, source: SheetSource) -> Contents:
     """What the workbook holds, of the sheets that the request needs (all of them while it names none).
 
-    `data` are the workbook's bytes, `source` the same workbook opened. Raises FileRefused.
+    `data` are the workbook's bytes, `source` the same workbook opened. Without a request nothing is read.
+    Raises FileRefused.
     """
     book = _Book(data, source)
     own = book.own_sheets()
-    asked = grid.read(own.get(REQUEST)).data_sheets
+    visible = tuple(entry.name for entry in _data_sheets(source) if entry.state == "visible")
+    if REQUEST not in own:
+        return Contents(visible, {}, own)
+    asked = grid.read(own[REQUEST]).data_sheets
     tables: dict[str, Table] = {}
     unread: dict[str, Problem] = {}
     for entry, table_name in _needed(source, asked):
@@ -57,7 +62,6 @@ def read(data: bytes, source: SheetSource) -> Contents:
             continue
         if table is not None:
             tables[entry.name] = table
-    visible = tuple(entry.name for entry in _data_sheets(source) if entry.state == "visible")
     return Contents(visible, tables, own, unread)
 
 
@@ -94,9 +98,15 @@ class _Book:
     """The cell reader's workbook beside its opened package."""
 
     def __init__(self, data: bytes, source: SheetSource) -> None:
-        self._source = source
-        self._reader = _guarded(lambda: python_calamine.load_workbook(BytesIO(data)), "")
-        self._empty_shared: tuple[int, ...] | None = None
+        self._data, self._source = data, source
+
+    @cached_property
+    def _reader(self) -> python_calamine.CalamineWorkbook:
+        return _guarded(lambda: python_calamine.load_workbook(BytesIO(self._data)), "")
+
+    @cached_property
+    def _empty_texts(self) -> tuple[int, ...]:
+        return markup.empty_shared_strings(self._source.shared_strings())
 
     def own_sheets(self) -> dict[str, RawSheet]:
         """Our sheets that hold entries of the user's, by our name for them."""
@@ -131,10 +141,10 @@ class _Book:
 
     def _cells(self, tab: str) -> SheetCells:
         """The whole sheet in typed columns. The reader parses without Python's lock while the markup is searched."""
-        xml = self._xml(tab)
+        xml, book = self._xml(tab), self._reader
         with ThreadPoolExecutor(1) as beside:
-            reading = beside.submit(_guarded, lambda: self._reader.get_sheet_by_name(tab), tab)
-            marks = _parsed(lambda: markup.scan(xml, self._empty_texts()), tab)
+            reading = beside.submit(_guarded, lambda: book.get_sheet_by_name(tab), tab)
+            marks = _parsed(lambda: markup.scan(xml, self._empty_texts), tab)
             sheet = reading.result()
         rows = sheet.iter_rows() if sheet.start is not None else ()
         columns, dates = typed.gather(rows, sheet.start[1] if sheet.start is not None else 0, sheet.width)
@@ -171,11 +181,6 @@ class _Book:
         values = {at: value for at, value in values.items() if value != ""}
         known = {at: text for at, text in formulas.items() if text}
         return RawSheet(tab, values, known, frozenset(at for at in dates if at in values))
-
-    def _empty_texts(self) -> tuple[int, ...]:
-        if self._empty_shared is None:
-            self._empty_shared = markup.empty_shared_strings(self._source.shared_strings())
-        return self._empty_shared
 
 
 # --- one sheet ---------------------------------------------------------------------------------

@@ -35,6 +35,8 @@ def written(build, **options) -> bytes:  # type: ignore[no-untyped-def]
     book = xlsxwriter.Workbook(held, {"in_memory": True, **options})
     page = book.add_worksheet("Data")
     build(book, page)
+    if "fit request" not in book.sheetnames:
+        book.add_worksheet("fit request")
     book.close()
     return held.getvalue()
 
@@ -215,6 +217,11 @@ def test_only_the_sheets_asked_for_are_read() -> None:
     read = contents(saved(book))
     assert list(read.tables) == ["Twin"]
     assert read.sheet_names == ("Refits", "Twin", "Notes")
+
+
+def test_without_a_request_nothing_is_read() -> None:
+    read = contents(workbook({"Refits": refits()}, request=False))
+    assert (read.tables, read.own, read.sheet_names) == ({}, {}, ("Refits",))
 
 
 def test_a_hidden_sheet_is_read_only_when_named() -> None:
