@@ -19,7 +19,7 @@ WHOLE = "#,##0"
 PLAIN_WHOLE = "0"
 RATIO = "0.000"
 TWO_PLACES = "0.00"
-P_VALUE = "[<0.0001]0.0E+00;0.0000"
+P_VALUE = "[=0]0;[<0.0001]0.0E+00;0.0000"
 DATE = "yyyy\\-mm\\-dd"
 
 _GROUP_FROM = 10_000
@@ -40,8 +40,10 @@ def decimals(reference: float, digits: int) -> int:
 def number_format(reference: float, digits: int) -> str:
     """The number format that shows numbers of the size of `reference` to `digits` significant digits.
 
-    Plain decimals, thousands grouped, from 0.00001 to a thousand million; powers of ten outside.
+    Plain decimals, thousands grouped, from 0.00001 to a thousand million; powers of ten outside; a bare 0 for 0.
     """
+    if reference == 0:
+        return PLAIN_WHOLE
     if not _is_plain(reference):
         return _scientific(digits)
     return places_format(reference, decimals(reference, digits))
@@ -198,11 +200,13 @@ def shown(value: float, code: str) -> str:
 
 
 def _section(value: float, code: str) -> str:
-    sections = code.split(";")
-    condition = re.match(r"\[<([0-9.]+)\]", sections[0])
-    if condition is None:
-        return sections[0]
-    return sections[0][condition.end() :] if value < float(condition.group(1)) else sections[1]
+    """The section of a format that `value` falls in: the first whose condition holds, else the last."""
+    *conditional, plain = code.split(";")
+    for section in conditional:
+        found = re.match(r"\[([<=])([0-9.]+)\]", section)
+        if found and (value < float(found[2]) if found[1] == "<" else value == float(found[2])):
+            return section[found.end() :]
+    return plain
 
 
 def _exponent(value: float) -> int:
