@@ -11,6 +11,7 @@ import struct
 import zlib
 from collections.abc import Iterable, Iterator, Mapping
 from dataclasses import dataclass, replace
+from itertools import pairwise
 
 from bridge.messages import FileRefused, say
 from bridge.package.limits import Limits
@@ -233,7 +234,7 @@ def _local_extra(data: bytes, first: int) -> bytes:
 def _check_spans(spans: list[tuple[int, int]], end: int) -> None:
     """Members may not overlap each other or the directory (packed bytes shared by many members are a bomb)."""
     spans.sort()
-    for (_, last), (following, _) in zip(spans, [*spans[1:], (end, end)], strict=True):
+    for (_, last), (following, _) in pairwise([*spans, (end, end)]):
         if last > following:
             raise FileRefused(say("zip-damaged", detail="two members share the same bytes, or one is cut off"))
 

@@ -120,23 +120,24 @@ def drop_empty_list(workbook: etree._Element) -> None:
         remove_element(holder)
 
 
-_LITERAL = re.compile(r'"(?:[^"]|"")*"')
-_SHEET = re.compile(r"'((?:[^']|'')+)'!|([^\s'!(),;:+\-*/^&=<>\"{}]+)!")
+# A quoted sheet, a text literal (which may look like a sheet), a sheet that needs no quotes.
+_SHEET = re.compile(r"""'((?:[^']|'')+)'!|"(?:[^"]|"")*"|([^\s'!(),;:+\-*/^&=<>"{}]+)!""")
 
 
 def sheets_mentioned(refers_to: str) -> tuple[str, ...]:
     """The sheets a formula's references name, as their tabs read, in order; `#REF!` names none."""
     found = []
-    for match in _SHEET.finditer(_LITERAL.sub("", refers_to)):
+    for match in _SHEET.finditer(refers_to):
         name = match[1].replace("''", "'") if match[1] else match[2]
-        if name != "#REF":
+        if name and name != "#REF":
             found.append(name)
     return tuple(found)
 
 
 def without_sheets(refers_to: str) -> str:
     """A reference's cells alone: `'fit rows'!$A$1:$C$9` becomes `A1:C9`."""
-    return _SHEET.sub("", refers_to).replace("$", "").replace(" ", "")
+    cells = _SHEET.sub(lambda match: "" if match[1] or match[2] else match[0], refers_to)
+    return cells.replace("$", "").replace(" ", "")
 
 
 def shift_scopes(workbook: etree._Element, removed: int) -> None:

@@ -76,6 +76,7 @@ _IN_THE_WAY_ELEMENTS = {
 }
 _SAME_WIDTH = 0.3  # characters; programs round a width they save again
 _MOST_COLUMNS = 1000
+_ENOUGH_COLUMNS = 3
 
 
 @dataclass(frozen=True, slots=True)
@@ -368,16 +369,28 @@ def _user_widths(
     if record is None:
         return {}
     new = record.widths if new_widths is None else new_widths
+    stated = dict(_stated_widths(root))
+    factor = _programs_factor(stated, record.widths)
     kept = {}
-    for column, width in _stated_widths(root):
+    for column, width in stated.items():
         was, would = record.widths.get(column), new.get(column)
         if was is None or would is None:
             keep = was is None and would is None
         else:
-            keep = abs(was - would) <= _SAME_WIDTH < abs(width - was)
+            keep = abs(was - would) <= _SAME_WIDTH < abs(width - was * factor)
         if keep:
             kept[column] = width
     return kept
+
+
+def _programs_factor(stated: Mapping[int, float], given: Mapping[int, float]) -> float:
+    """By what a program multiplied all widths when it saved them with another default font; 1 unless most agree."""
+    ratios = sorted(stated[column] / width for column, width in given.items() if column in stated and width > 0)
+    if len(ratios) < _ENOUGH_COLUMNS:
+        return 1.0
+    middle = ratios[len(ratios) // 2]
+    alike = sum(abs(ratio / middle - 1) < 0.02 for ratio in ratios)
+    return middle if alike > len(ratios) / 2 else 1.0
 
 
 def _print_names(

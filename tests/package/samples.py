@@ -60,7 +60,7 @@ def rows_sheet(seed: int = 1, title: str = "") -> Sheet:
         },
         title=title,
         blocks=(block,),
-        widths={0: 9.0, 1: 12.0, 3: 20.0},
+        widths={0: 9.0, 1: 12.0, 2: 12.0, 3: 20.0},
         heights={0: 24.0},
         merges=(Merge((0, 0), (0, 3)),),
         highlights=(
@@ -87,7 +87,7 @@ def request_sheet(title: str = "", rows_tab: str = "fit rows") -> Sheet:
         "fit request",
         {(0, 0): Cell("column", HEADING), (0, 1): Cell("A", HEADING), (1, 1): Cell("predictor", INPUT)},
         title=title,
-        widths={0: 20.0},
+        widths={0: 20.0, 1: 14.0, 2: 14.0, 3: 14.0},
         drop_downs=(
             DropDown((1, 1), (9, 3), ("response", 'predictor "x"'), prompt_title="role", prompt="choose one"),
             DropDown((1, 5), (9, 5), reference(rows_tab, (FIRST, 3), (FIRST + 9, 3)), strict=True),
