@@ -175,6 +175,10 @@ class _Page:
             self._look(row.row, self._between(), style.FACT)
             self._look(row.row, (self.grid.label_column,), label)
             self._look(row.row, self.columns, style.INPUT)
+            width = self.widths[self.grid.label_column]
+            if measure.units(row.label, bold=True) > width:
+                self._look(row.row, (self.grid.label_column,), replace(label, wrap=True))
+                self.heights[row.row] = measure.height(row.label, width, bold=True)
 
     def _draw_columns(self) -> None:
         grid = self.grid

@@ -27,7 +27,7 @@ class ColumnNames:
             place = (table.sheet, column.name)
             self.columns[self.label(*place)] = (table, column)
             self._places.setdefault(_key(column.name), place)
-            for sheet in (table.sheet, f"'{table.sheet}'", table.excel_table):
+            for sheet in (table.sheet, f"'{table.sheet}'", table.excel_table or table.sheet):
                 self._places.setdefault(_key(f"{sheet}!{column.name}"), place)
         self.all = tuple(self.columns)
 

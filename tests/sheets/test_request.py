@@ -315,6 +315,17 @@ def test_three_hundred_columns() -> None:
     assert sheet.fit_height == 0
 
 
+def test_a_long_name_is_shown_whole() -> None:
+    rows = refits()
+    rows[0][1] = "hours in the yard, without the days on which it rained or nobody could be found"
+    sheet = laid_out(first_contact(contents(workbook({"Refits": rows}))))
+    row = next(
+        row for (row, column), cell in sheet.cells.items() if column == 0 and str(cell.value).startswith("hours in")
+    )
+    assert sheet.cells[(row, 0)].format.wrap
+    assert sheet.heights[row] > 25
+
+
 # --- the seal's cells --------------------------------------------------------------------------
 
 

@@ -83,6 +83,26 @@ def test_the_grid_may_stand_anywhere(source: Contents, down: int, right: int) ->
     assert model.spec.level == 0.9
 
 
+@pytest.mark.parametrize("gone", [1, 2, 3])
+def test_a_column_of_facts_may_be_deleted(source: Contents, gone: int) -> None:
+    page = typed(source, GOOD)
+    cells = {(row, at - (at > gone)): value for (row, at), value in page.cells.items() if at != gone}
+    if gone == 1:  # with it went the sheet's name
+        cells[(page.row("data sheet"), 1)] = "Refits"
+    other = Typed(source, read(cells), cells)
+    assert other.model().spec == page.model().spec
+    assert other.understood().grid.column_rows == page.understood().grid.column_rows
+
+
+def test_columns_may_be_inserted(source: Contents) -> None:
+    page = typed(source, GOOD)
+    cells = {(row, at + (at > 2)): value for (row, at), value in page.cells.items()}
+    cells[(page.row("hull"), 3)] = "my own remark"
+    other = Typed(source, read(cells), cells)
+    assert other.model().spec == page.model().spec
+    assert other.understood().grid.cells == cells
+
+
 def test_rows_may_be_inserted_and_notes_written_beside(source: Contents) -> None:
     page = typed(source, GOOD)
     row = page.row("hull")
