@@ -44,12 +44,16 @@ Array = NDArray[np.float64]
 
 def fit_model(spec: ModelSpec, observations: Observations) -> ModelResult:
     """Fit and examine one model on complete rows. Raises RegressionError."""
-    with one_blas_thread():
-        return _fit_model(spec, observations)
+    try:
+        with one_blas_thread(), np.errstate(over="ignore"):
+            return _fit_model(spec, observations)
+    except np.linalg.LinAlgError as error:  # the fit is exact, but doubles cannot examine it
+        raise RegressionError(f"the columns depend too nearly on each other to be examined ({error})") from error
 
 
 def _fit_model(asked: ModelSpec, observations: Observations) -> ModelResult:
-    found = None if asked.search is Search.NONE else search.run(asked, observations)
+    leastsquares.ingredients(asked, observations)
+    found = search.run(asked, observations) if _searches(asked) else None
     spec = asked if found is None else search.with_terms(asked, found.dropped)
     solved = leastsquares.solve(spec, observations)
     kernel = _by(spec.fit_by, solved.kernel)
@@ -73,6 +77,10 @@ def _fit_model(asked: ModelSpec, observations: Observations) -> ModelResult:
         observed=observed,
         max_leverage=float((kernel.leverage if kernel.weights is None else kernel.leverage / kernel.weights).max()),
     )
+
+
+def _searches(asked: ModelSpec) -> bool:
+    return asked.search is not Search.NONE and any(term.candidate for term in asked.terms)
 
 
 def _by(criterion: FitBy, kernel: Kernel) -> Kernel:
@@ -106,7 +114,7 @@ def _ranges(spec: ModelSpec, observations: Observations) -> tuple[Range, ...]:
 
 def _cross_validation(kernel: Kernel, asked: ModelSpec, spec: ModelSpec, observations: Observations) -> CrossValidation:
     """From the one factorisation where that will do; a search or a resistant fit is done again without each fold."""
-    if asked.search is Search.NONE and asked.fit_by is FitBy.LEAST_SQUARES:
+    if not _searches(asked) and asked.fit_by is FitBy.LEAST_SQUARES:
         return crossvalidation.run(kernel, spec, observations)
 
     def refit(others: Observations, fold: Observations) -> Array:
@@ -115,13 +123,14 @@ def _cross_validation(kernel: Kernel, asked: ModelSpec, spec: ModelSpec, observa
         except RegressionError:  # the other rows do not carry the model
             return np.full(fold.n, np.nan)
 
-    return crossvalidation.run_refitting(asked, observations, refit, asked.search is not Search.NONE)
+    return crossvalidation.run_refitting(asked, observations, refit, _searches(asked))
 
 
 def _predicted(asked: ModelSpec, others: Observations, fold: Observations) -> Array:
     """The mean response of the fold's rows, original units, by the model found on the others."""
     spec = asked
-    if asked.search is not Search.NONE:
+    leastsquares.ingredients(asked, others)
+    if _searches(asked):
         spec = search.with_terms(asked, search.run(asked, others).dropped)
     kernel = _by(spec.fit_by, leastsquares.solve(spec, others).kernel)
     eta = design.matrix(kernel.columns, fold) @ kernel.coefficients

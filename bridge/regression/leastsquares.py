@@ -1,5 +1,7 @@
 """One door to a least-squares fit: exact to 10,000 rows; beyond, by blocks, unless the digits would not do.
 
+Exact means: of the decimals as typed. Beyond 10,000 rows a column with cells of more than 15 digits is taken as the
+doubles it is stored as; logarithms, roots and reciprocals are taken as the doubles a spreadsheet has for them.
 Everything else in the numeric core reads the Kernel that comes out.
 """
 
@@ -32,8 +34,11 @@ class Solved:
     layout: design.Layout
 
 
-def solve(spec: ModelSpec, observations: Observations) -> Solved:
-    """Fit by (weighted) least squares. Raises RegressionError."""
+def ingredients(spec: ModelSpec, observations: Observations) -> tuple[design.Layout, Array, Array | None]:
+    """The layout, the response on the fitted scale and the weights, once all have been found fit to be used.
+
+    Raises RegressionError for everything that can be known before fitting.
+    """
     layout = design.layout(spec, observations)
     if observations.n < 2:
         raise TooFewRows(observations.n, len(layout.columns))
@@ -41,8 +46,14 @@ def solve(spec: ModelSpec, observations: Observations) -> Solved:
     weights = design.weights(spec, observations)
     if not y.any() or (spec.intercept and (y == y[0]).all()):
         raise ConstantResponse(f"{spec.response} is {float(y[0])!r} in every row", spec.response)
-    quick = None
     design.check_domain(layout.columns, observations)
+    return layout, y, weights
+
+
+def solve(spec: ModelSpec, observations: Observations) -> Solved:
+    """Fit by (weighted) least squares. Raises RegressionError."""
+    layout, y, weights = ingredients(spec, observations)
+    quick = None
     with one_blas_thread():
         if observations.n > EXACT_ROWS:
             quick = blocked.fit(spec, observations, layout.columns, y, weights)

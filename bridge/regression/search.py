@@ -19,7 +19,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from bridge.regression import crossvalidation, design, leastsquares
-from bridge.regression.errors import RegressionError, TooManyColumns
+from bridge.regression.errors import RegressionError, TooFewRows, TooManyColumns
 from bridge.regression.results import SearchResult, Subset
 from bridge.regression.spec import ModelSpec, Observations, Search
 
@@ -64,6 +64,8 @@ def run(spec: ModelSpec, observations: Observations) -> SearchResult:
     best = kept.ranked()
     if spec.search is Search.CROSS_VALIDATION:
         best = _cross_validated(problem, kept, spec, observations)
+    if not best:  # no subset leaves a row to judge it by
+        raise TooFewRows(observations.n, problem.full_size)
     ranked = tuple(Subset(_names(problem, mask), value) for value, mask in best[:SHOWN])
     chosen = ranked[0].terms
     dropped = tuple(name for name in problem.units if name not in chosen)

@@ -48,8 +48,9 @@ def digits(found, true) -> float:
 @pytest.mark.parametrize("seed", range(24))
 def test_the_digits_claimed_are_there(seed):
     quick, exact = both(*problem(seed))
-    if quick is None:
-        pytest.skip("too nearly dependent: the exact path takes it")
+    if quick is None:  # left to the exact path: its columns are nearly dependent
+        assert exact.condition_number > 300
+        return
     measured = min(digits(quick.coefficients, exact.coefficients), digits(quick.standard_errors, exact.standard_errors))
     assert measured > quick.digits - 0.7
     if quick.digits >= leastsquares.LEAST_DIGITS:

@@ -10,7 +10,7 @@ import statsmodels.api as sm
 
 from bridge.regression import crossvalidation, design
 from bridge.regression.core import fit_model
-from bridge.regression.errors import OneLevel, RegressionError
+from bridge.regression.errors import ConstantResponse, OneLevel, RegressionError, TooFewRows
 from bridge.regression.spec import (
     CategoryTerm,
     CrossedTerm,
@@ -155,3 +155,25 @@ def test_many_rows_go_the_same_way():
     assert large.fit.standard_errors == pytest.approx(theirs.bse, rel=1e-9)
     assert large.fit.aic == pytest.approx(theirs.aic, rel=1e-12)
     assert crossvalidation.fold_assignment(SPEC, yard(3, n))[1] == 10
+
+
+def test_a_constant_response_is_refused_before_any_search():
+    columns = {**yard().columns, "hours": np.full(80, 3.0)}
+    asked = ModelSpec("hours", terms=(NumberTerm("length", candidate=True),), search=Search.CP)
+    with pytest.raises(ConstantResponse):
+        fit_model(asked, Observations(columns, 80))
+
+
+def test_a_search_without_candidates_is_a_plain_fit():
+    plain, searched = fit_model(SPEC, yard()), fit_model(replace(SPEC, search=Search.CP), yard())
+    assert searched.search is None
+    assert searched.fit.coefficients.tolist() == plain.fit.coefficients.tolist()
+    assert searched.cross_validation.rmse == plain.cross_validation.rmse
+    assert not searched.cross_validation.includes_search
+
+
+def test_a_search_among_too_few_rows_is_refused():
+    columns = {"a": np.array([0.0, 2.0]), "c": Levels(np.array([1, 0]), ("p", "q")), "y": np.array([0.86, -1.38])}
+    terms = (NumberTerm("a", candidate=True), CategoryTerm("c"))
+    with pytest.raises(TooFewRows):
+        fit_model(ModelSpec("y", terms=terms, search=Search.CP), Observations(columns, 2))
