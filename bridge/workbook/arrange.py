@@ -192,15 +192,24 @@ def _complete_settings(page: _Page) -> None:
     groups = {settings.IS: settings.WHERE, settings.VALUE: settings.WHERE}
     groups |= {f"and {word}": settings.AND_WHERE for word in (settings.IS, settings.VALUE)}
     missing = [row for key, row in zip(all_keys, settings.ROWS, strict=True) if groups.get(key or "", key) not in there]
-    if not missing:
+    if missing:
+        last = max((row.row for row in grid.setting_rows), default=grid.setting_header)
+        first = page.room_after(last, len(missing), grid.status_header)
+        for row, setting in enumerate(missing, first):
+            page.put(row, grid.label_column, setting.label)
+    _say_defaults(page)
+
+
+def _say_defaults(page: _Page) -> None:
+    """What a blank means, beside each setting."""
+    grid = page.grid()
+    column = grid.other_columns.get(grids.BLANK_MEANS)
+    if column is None:
         return
-    last = max((row.row for row in grid.setting_rows), default=grid.setting_header)
-    row = page.room_after(last, len(missing), grid.status_header)
-    meaning = grid.other_columns.get(grids.BLANK_MEANS)
-    for at, setting in enumerate(missing, row):
-        page.put(at, grid.label_column, setting.label)
-        if meaning is not None:
-            page.put(at, meaning, setting.blank_means)
+    defaults = dict(zip(settings.keys([row.label for row in settings.ROWS]), settings.ROWS, strict=True))
+    for row, key in zip(grid.setting_rows, settings.keys([row.label for row in grid.setting_rows]), strict=True):
+        if key is not None:
+            page.put(row.row, column, defaults[key].blank_means)
 
 
 def _spare_crossed(page: _Page) -> None:

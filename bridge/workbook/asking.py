@@ -68,6 +68,12 @@ class Asking:
         """Keep a message about a cell of the request."""
         self.problems.append(say(key, cell=request_cell(at), model=self.name, at=at, **fields))
 
+    def tell_of_data(self, key: str, used: Used, rows: NDArray[np.intp]) -> None:
+        """Keep a message about cells of a data column, by the indexes of their rows."""
+        cells = data_cells(used.table, used.column, rows)
+        first = data_cell(used.table, used.column, int(rows[0]))
+        self.problems.append(say(key, cell=first, model=self.name, column=used.name, cells=cells))
+
     @property
     def is_refused(self) -> bool:
         """Whether anything met so far keeps the model from being fitted."""

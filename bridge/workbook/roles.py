@@ -4,13 +4,15 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
+import numpy as np
+
 from bridge.page.cells import address
 from bridge.regression.spec import CategoryTerm, NumberTerm, Shape
 from bridge.workbook import entries, facts, spelling
 from bridge.workbook.asking import Asking, Used
 from bridge.workbook.entries import Entry, Misread, Role
 from bridge.workbook.request import GridRow
-from bridge.workbook.tables import Kind
+from bridge.workbook.tables import Kind, State
 
 _SINGLE = (Role.WEIGHT, Role.LABEL, Role.ORDER, Role.GROUP)
 _TERMS = (Role.PREDICTOR, Role.CATEGORY, Role.CANDIDATE)
@@ -153,6 +155,10 @@ def _tell_two(asking: Asking, key: str, same: Sequence[Used], **fields: object) 
 def _check_kind(asking: Asking, one: Used) -> None:
     role = one.entry.role
     if one.column.kind is Kind.EMPTY:
+        valueless = np.flatnonzero(one.column.state == State.NO_VALUE)
+        if len(valueless):
+            asking.tell_of_data("formula-without-value", one, valueless)
+            return
         asking.tell("column-empty", one.cell, column=one.name, sheet=one.table.sheet)
         return
     number_role = role if role in _NEEDS_NUMBERS else None
