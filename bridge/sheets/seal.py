@@ -260,9 +260,7 @@ def _held(column: DataColumn) -> str:
 
 def _column_checks(one: Watched, row: int) -> Iterator[Check]:
     table, column = one.table, one.column
-    first = int(table.rows[0])
-    down = f"{quoted(table.sheet)}!{live.span((first - 1, column.index), (_LAST_ROW - 1, column.index))}"
-    yield Check(f"{column.name}: filled cells", "down to the end of the sheet", f"COUNTA({down})", _filled(column))
+    yield Check(f"{column.name}: filled cells", "to the end of the sheet", _filled_text(table, column), _filled(column))
     row += 1
     texts = tuple(sorted({text for text in column.texts if text}))
     few = len(texts) <= _FEW_TEXTS
@@ -277,6 +275,17 @@ def _column_checks(one: Watched, row: int) -> Iterator[Check]:
             yield part.of_texts(mine, at, listed=not shared)
             shared = at if few else ""
             row += 1
+
+
+def _filled_text(table: Table, column: DataColumn) -> str:
+    """The column's filled cells and those under the table, in two ranges, so that a table moved elsewhere alone counts
+    the same; a row put in between the two counts too."""
+    first, last = int(table.rows[0]), int(table.rows[-1])
+    inside, end, below, far = (
+        live.data_range(table, column, *ends)
+        for ends in ((first, last), (last, last), (last + 1, last + 1), (last + 1, _LAST_ROW))
+    )
+    return f"COUNTA({inside})+COUNTA({far})+ROW({below})-ROW({end})-1"
 
 
 def _filled(column: DataColumn) -> int:
