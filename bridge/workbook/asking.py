@@ -4,12 +4,15 @@ from __future__ import annotations
 
 from dataclasses import dataclass, field
 
+import numpy as np
+from numpy.typing import NDArray
+
 from bridge.messages import Problem, Severity, say
 from bridge.page.cells import address
 from bridge.workbook import grid as grids
 from bridge.workbook.arrange import Arranged
 from bridge.workbook.entries import Entry
-from bridge.workbook.places import request_cell
+from bridge.workbook.places import data_cell, data_cells, request_cell
 from bridge.workbook.request import Grid, Scalar
 from bridge.workbook.tables import DataColumn, Table
 
