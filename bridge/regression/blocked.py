@@ -73,13 +73,11 @@ class _Problem:
 
     def not_decimal(self, values: Array, rows: slice) -> NDArray[np.bool_]:
         """Which columns taken as decimals are not, in these rows."""
-        with np.errstate(invalid="ignore"):
-            same = [
-                not marked
-                or (values[:, j] / self.unit[j] == (self.x[rows, j] if j < len(self.columns) else self.y[rows])).all()
-                for j, marked in enumerate(self.decimal)
-            ]
-        return ~np.array(same)
+        cells = [*self.x[rows].T, self.y[rows]]
+        wrong = np.zeros(len(cells), dtype=bool)
+        for j in np.flatnonzero(self.decimal):
+            wrong[j] = (values[:, j] / self.unit[j] != cells[j]).any()
+        return wrong
 
 
 @dataclass(frozen=True, slots=True)
@@ -151,7 +149,7 @@ def _cross_products(problem: _Problem, observations: Observations) -> tuple[Arra
         with np.errstate(over="ignore", invalid="ignore"):  # looked for in the sums
             design.matrix(problem.columns, observations, rows, out=problem.x[rows])
             values = problem.values(rows)
-            np.logical_or(wrong, problem.not_decimal(values, rows), out=wrong)
+            wrong[problem.not_decimal(values, rows)] = True
             both = problem.moved(values, rows)
             return np.asarray(both.T @ both)
 
