@@ -154,9 +154,8 @@ class _Page:
         for (row, column), value in grid.cells.items():
             if value == arrange.TITLE:
                 self.looks[(row, column)] = style.TITLE
+                self.looks[(row + 1, column)] = style.SUBTITLE
                 self.heights[row] = 25.0
-            elif value == arrange.HINT:
-                self.looks[(row, column)] = style.SUBTITLE
         cell = grids.data_sheet_cell(grid)
         if cell is not None:
             self._look(cell[0], (grid.label_column,), _LABEL)
