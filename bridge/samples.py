@@ -13,7 +13,7 @@ from pathlib import Path
 # In the order in which a newcomer should meet them; each file's name is the template's name.
 _TEMPLATES = {
     "blank": "a bare start: one result, a few numbers and a category that may explain it",
-    "quote": "quote a new job from past jobs: hours from size, material and difficulty, and a price range",
+    "quote": "quote a new job from past jobs: hours from area, material, coats and access",
     "calibration": "a calibration line: an instrument's readings at known values, with repeats",
     "energy": "energy use against weather and output, week by week, with a bend where heating ends",
     "price": "asking prices from attributes: size, age, condition and place",
