@@ -99,7 +99,7 @@ def _enter(path: Path) -> bool:
 
 def _take(path: Path, wait: float) -> bool:
     """Create the claim; False where nothing can be created."""
-    until = time.monotonic() + wait
+    until, content = time.monotonic() + wait, _content()
     while True:
         try:
             handle = os.open(path, os.O_WRONLY | os.O_CREAT | os.O_EXCL, 0o644)
@@ -114,9 +114,19 @@ def _take(path: Path, wait: float) -> bool:
                 return False
             raise
         else:
-            with open(handle, "wb") as file:
-                file.write(_content())
-            return True
+            return _written(handle, content, path)
+
+
+def _written(handle: int, content: bytes, path: Path) -> bool:
+    """At once, so that a claim without content, which nobody can judge, hardly ever stands there."""
+    try:
+        os.write(handle, content)
+    except OSError:  # no space: what is to be protected will fail, too
+        path.unlink(missing_ok=True)
+        return False
+    finally:
+        os.close(handle)
+    return True
 
 
 def _content() -> bytes:

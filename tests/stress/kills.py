@@ -28,6 +28,7 @@ from tests.stress.savers import SAVERS, dawdle
 from tests.stress.zips import contents, look, saved, with_result
 
 SIZE = 400_000
+LONGEST_LIFE_S = 0.08
 RECOVERY_PATIENCE_S = 15.0  # a half-written claim or journal is believed dead after some seconds
 
 
@@ -73,7 +74,7 @@ def one_kill(folder: Path, number: int, chance: random.Random, found: collection
     path = folder / "book.xlsx"
     path.write_bytes(saved(number, SIZE))
     child = forked_bridge(path, number)
-    killer = threading.Timer(chance.random() * 0.04, os.kill, (child, signal.SIGKILL))
+    killer = threading.Timer(chance.random() * LONGEST_LIFE_S, os.kill, (child, signal.SIGKILL))
     killer.start()
     style, save = chance.choice(list(SAVERS.items()))
     for _ in range(chance.randint(1, 3)):

@@ -23,9 +23,14 @@ def saved(number: int, padding: int = 0) -> bytes:
 
 def with_result(data: bytes) -> bytes:
     """The same with a result made from it."""
+    return with_member(data, "result.txt", str(contents(data)[0]))
+
+
+def with_member(data: bytes, name: str, text: str) -> bytes:
+    """The same with one more member."""
     made = io.BytesIO(data)
     with zipfile.ZipFile(made, "a") as book:
-        book.writestr(zipfile.ZipInfo("result.txt"), book.read("number.txt"))
+        book.writestr(zipfile.ZipInfo(name), text)
     return made.getvalue()
 
 

@@ -136,3 +136,21 @@ def faulty(path: str, while_open: str, note: str) -> Mapping[str, object]:
         return repeat(path, while_open, note)
     finally:
         setattr(place, name, kept)
+
+
+def sheet(path: str, while_open: str, note: str) -> Mapping[str, object]:
+    """Puts in a sheet RESULT that repeats A1 of the first sheet, so that a person would see it."""
+    import openpyxl
+
+    snapshot = read(path)
+    book = openpyxl.load_workbook(io.BytesIO(snapshot.data))
+    typed = book.worksheets[0]["A1"].value
+    if "RESULT" in book.sheetnames and book["RESULT"]["A1"].value == typed:
+        return {"outcome": "unchanged", "fingerprint": snapshot.fingerprint}
+    page = book["RESULT"] if "RESULT" in book.sheetnames else book.create_sheet("RESULT")
+    page["A1"] = typed
+    made = io.BytesIO()
+    book.save(made)
+    put = write_back(snapshot, made.getvalue(), while_open)
+    outcome = "fitted" if put.kind == "written" else put.kind.value
+    return {"outcome": outcome, "message": put.note, "fingerprint": put.fingerprint}
