@@ -200,6 +200,9 @@ def _fitted(model: ModelRequest, tables: Mapping[str, Table], stages: Stages) ->
             result: ModelResult | None = fit_model(model.spec, observations)
     except RegressionError as error:
         result, problems = None, (*problems, refusal.explain(error, model, table, taken))
+    except (ArithmeticError, ValueError) as error:
+        # Numbers at the edge of what doubles hold: one such model must not keep the others from their results.
+        result, problems = None, (*problems, say("numbers-broke-down", model=model.name, kind=type(error).__name__))
     return ModelSheet(model, table, taken, result, problems)
 
 

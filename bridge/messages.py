@@ -59,6 +59,10 @@ CATALOGUE: dict[str, tuple[Severity, str]] = {
         _R,
         "The model is wider than can be fitted here: {reason}. Use fewer predictors, levels or crossed columns.",
     ),
+    "numbers-broke-down": (
+        _R,
+        "The arithmetic broke down ({kind}) on these rows. Look for values of extreme size in the columns it uses.",
+    ),
     "cannot-be-fitted": (_R, "The model cannot be fitted to these rows: {reason}. Look at the columns it uses."),
     # package: files that are left alone
     "empty-file": (_R, "The file is empty. Save the workbook again from your spreadsheet program."),
