@@ -170,6 +170,14 @@ def percent(fraction: float, digits: int = 2) -> str:
     return f"{_grouped(value, min(2, decimals(value, digits)))}%"
 
 
+def share(fraction: float) -> str:
+    """A share of the whole as a percentage that is 100% only if it is all: `93%`, `99.6%`, `99.9992%`."""
+    if not 0.99 < fraction < 1:
+        return percent(fraction)
+    places = min(8, decimals(100 * (1 - fraction), 1))
+    return f"{math.floor(fraction * 100 * 10**places) / 10**places:.{places}f}%"
+
+
 def p_words(p: float) -> str:
     """A p value as words show it: `p = 0.0003`, `p < 0.0001`, or `no p value` where there is none."""
     if math.isnan(p):

@@ -12,6 +12,7 @@ from bridge.sheets import figures, words
 from bridge.sheets.book import ModelSheet
 
 GOES = "goes with"  # association, not cause
+STANDS_OUT = 0.05
 _MANY = 3.0  # on the log scale: twenty times
 _PERCENT_STEP = 1.1  # what a log predictor is raised by
 
@@ -19,18 +20,32 @@ _PERCENT_STEP = 1.1  # what a log predictor is raised by
 def strongest(model: ModelSheet, result: ModelResult, most: int) -> list[str]:
     """At most `most` phrases, the largest standardised effects first: `10% more length goes with 13% more hours`.
 
-    Effects that no single figure tells (curves, products, root and reciprocal scales) are named as such or left out.
+    Only terms that stand out from chance count (p below 0.05, common practice), and products, which say how the others
+    are to be read. Effects that no single figure tells (curves, root and reciprocal scales) are named as such or left
+    out.
     """
     if result.spec.response_shape not in (Shape.AS_IS, Shape.LOG):
         return []
     phrases = []
+    telling = standing_out(result)
     for term in _by_size(result):
+        if term not in telling:
+            continue
         phrase = _phrase(model, result, term)
         if phrase and phrase not in phrases:
             phrases.append(phrase)
         if len(phrases) == most:
             break
     return phrases
+
+
+def standing_out(result: ModelResult) -> set[str]:
+    """The terms with a coefficient whose p is below 0.05, and the products."""
+    return {
+        column.term
+        for column, p in zip(result.design.columns, result.fit.p.tolist(), strict=True)
+        if column.factors and (p < STANDS_OUT or len(column.factors) > 1)
+    }
 
 
 def _by_size(result: ModelResult) -> list[str]:

@@ -115,9 +115,10 @@ def _serial(model: ModelSheet, result: ModelResult, check: Check) -> _Said:
     alike = "resemble each other" if not check.estimate < 0 else "alternate"
     strength = "" if math.isnan(check.estimate) else f" (correlation {figures.sentence_number(check.estimate, 2)})"
     opening = "Clear signs" if check.p < CLEAR else "Some signs"
+    covered = result.spec.errors in (Errors.SERIAL, Errors.GROUPED)
+    size = "" if covered else f"; standard errors are then as a rule too {'large' if check.estimate < 0 else 'small'}"
     return _Said(
-        f"{opening} that the residuals of neighbouring rows{order} {alike}{strength}; standard errors that ignore "
-        f"this are too small or too large.{_serial_advice(result)}",
+        f"{opening} that the residuals of neighbouring rows{order} {alike}{strength}{size}.{_serial_advice(result)}",
         _serial_weight(result, check.p),
     )
 
@@ -159,6 +160,8 @@ def _unknown(model: ModelSheet, result: ModelResult, check: Check) -> _Said:
     found = "a sign against" if check.p < SIGN else "no sign against"
     return _Said(f"The test shows {found} the assumption.", int(check.p < SIGN))
 
+
+SAME_MATTER = (("even spread, any form", "even spread"), ("rows further apart", "neighbouring rows"))
 
 _Speaker = Callable[[ModelSheet, ModelResult, Check], _Said]
 _SPEAKERS: dict[str, tuple[str, _Speaker]] = {

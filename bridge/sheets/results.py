@@ -117,7 +117,8 @@ def _whole(model: ModelSheet, result: ModelResult, value: float) -> str:
 
 
 def _ratio(model: ModelSheet, result: ModelResult, value: float) -> str:
-    return "0.0000" if 0.999 < value < 1 else figures.RATIO
+    """Three decimals, more where these would make it look like 1."""
+    return figures.places_format(value, min(10, max(3, figures.decimals(1 - value, 2)))) if value < 1 else figures.RATIO
 
 
 def _criterion(model: ModelSheet, result: ModelResult, value: float) -> str:

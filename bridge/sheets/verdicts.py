@@ -116,7 +116,7 @@ def _accounts(model: ModelSheet, result: ModelResult) -> str:
     rows = ", ".join([words.plural(fit.n, "row"), *_asked(model, result)])
     if not terms:
         return f"the mean of {response}, from {rows}, with nothing to explain it."
-    share = figures.percent(fit.r_squared, 3 if fit.r_squared > 0.99 else 2)
+    share = figures.share(fit.r_squared)
     about = "of its variation" if spec.intercept else "of its sum of squares about zero"
     unseen = ""
     if math.isfinite(fit.loo_r_squared) and fit.r_squared - fit.loo_r_squared > OPTIMISM:
@@ -148,6 +148,10 @@ _ERRORS = {Errors.UNEVEN_SPREAD: "uneven spread", Errors.GROUPED: "grouped rows"
 
 
 def _effects(model: ModelSheet, result: ModelResult) -> list[str]:
+    if not result.spec.terms:
+        return []
+    if not in_short.standing_out(result):
+        return ["No single effect stands out from chance."]
     found = in_short.strongest(model, result, MOST_EFFECTS)
     alone = len(result.spec.terms) < 2 or not any(in_short.GOES in phrase for phrase in found)
     return [f"{words.capital(words.listing(found))}{'' if alone else ', all else equal'}."] if found else []
@@ -183,10 +187,19 @@ def _concerns(model: ModelSheet, result: ModelResult) -> list[_Concern]:
     found += _few_rows(result)
     if not result.checks:
         found.append(_Concern(readings.NO_RESIDUAL, 3))
-    found += [_Concern(r.text, r.weight) for r in readings.checks(model, result) if r.weight]
+    found += [_Concern(reading.text, reading.weight) for reading in _telling(readings.checks(model, result))]
     found += _entangled(model, result)
     found += _digits(result)
     return found
+
+
+def _telling(checks: Sequence[readings.Reading]) -> list[readings.Reading]:
+    """The checks that found something; of two that look for the same thing, the one that says more."""
+    found = {reading.name: reading for reading in checks if reading.weight}
+    for general, special in readings.SAME_MATTER:
+        if special in found:
+            found.pop(general, None)
+    return list(found.values())
 
 
 def _few_rows(result: ModelResult) -> list[_Concern]:
@@ -268,6 +281,10 @@ def _nested(pair: Nested, small: Fitted, large: Fitted) -> str:
     terms = dict.fromkeys(column.term for column in large[1].design.columns)
     there = {column.term for column in small[1].design.columns}
     added = [words.label_in(large[0].table, term) for term in terms if term not in there]
+    if not added:  # the same terms in a richer form: a bend, a power
+        known = {column.label for column in small[1].design.columns}
+        labels = [column.label for column in large[1].design.columns if column.label not in known]
+        added = [words.label_in(large[0].table, label) for label in labels]
     what = f"adds {words.listing(added)}" if added else f"adds {words.plural(pair.df, 'coefficient')}"
     figure = (
         f"partial F = {figures.sentence_number(pair.f, 3)} on {pair.df} and {pair.df_residual} degrees of freedom, "

@@ -119,6 +119,14 @@ def test_percentages_in_words(fraction, wanted):
     assert figures.percent(fraction) == wanted
 
 
+@given(st.floats(0, 1))
+def test_only_the_whole_is_called_a_hundred_percent(fraction):
+    text = figures.share(fraction)
+    if 0.99 < fraction < 1 - 1e-9:
+        assert float(text.rstrip("%")) < 100
+    assert float(text.rstrip("%")) == pytest.approx(100 * fraction, abs=0.6)
+
+
 def test_figures_that_do_not_exist_leave_their_cell_empty_and_infinite_ones_are_said():
     assert figures.figure_cell(math.nan, Format()).value is None
     assert figures.figure_cell(math.inf, Format()).value == "unbounded"
