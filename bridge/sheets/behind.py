@@ -38,7 +38,10 @@ class Behind:
 
     def add(self, owner: str, title: str, values: Iterable[float | None]) -> Points:
         """One more column; where its cells stand."""
-        kept = tuple(None if value is None or not np.isfinite(value) else float(value) for value in values)
+        numbers = np.array(values if isinstance(values, np.ndarray) else list(values), dtype=np.float64)  # None: NaN
+        kept: tuple[float | None, ...] = tuple(numbers.tolist())
+        if not np.isfinite(numbers).all():
+            kept = tuple(value if known else None for value, known in zip(kept, np.isfinite(numbers), strict=True))
         column = FIRST_COLUMN + len(self.columns)
         self.columns.append((owner, title, kept))
         last = FIRST_ROW + max(len(kept), 1) - 1
