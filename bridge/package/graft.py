@@ -58,8 +58,7 @@ def graft(
     `title` is not what its tab says, or the format cannot hold what a sheet asks for.
     """
     places = _places(package, sheets, adopt)
-    tabs = {each.name.casefold() for each in package.sheets if each.ours} | {each.tab.casefold() for each in places}
-    our_names.refuse_foreign(package, names, tabs)
+    our_names.refuse_foreign(package, names, [place.tab for place in places])
     amendment = Amendment(package)
     made = _made_before(package, amendment.workbook)
     styles_part, stylesheet = _styles(amendment, made)

@@ -26,26 +26,52 @@ class Marked:
     print_names: tuple[Name, ...]
 
 
-def recorded_names(package: Package) -> set[str]:
-    """The names for people's formulas that the last graft put in, case aside."""
+@dataclass(frozen=True, slots=True)
+class Ownership:
+    """What tells our names for people's formulas from the user's (all case aside).
+
+    `ours` and `users` are tab texts; `recorded` the names that the last graft put in.
+    """
+
+    ours: frozenset[str]
+    users: frozenset[str]
+    recorded: frozenset[str]
+
+    def has(self, name: Name) -> bool:
+        """Whether we put a name in: it is on record and the user has not pointed it at a sheet of theirs since, or it
+        speaks of nothing but our sheets."""
+        mentioned = {tab.casefold() for tab in names.sheets_mentioned(name.refers_to)}
+        if name.name.casefold() in self.recorded:
+            return not mentioned & self.users
+        return bool(mentioned) and mentioned <= self.ours
+
+    def put_in(self, name: Name) -> bool:
+        """Whether a name is one that the last graft put in for people's formulas."""
+        return name.scope is None and name.name.casefold() in self.recorded and self.has(name)
+
+
+def ownership(package: Package, becoming: Iterable[str] = ()) -> Ownership:
+    """What is known about a package's names; `becoming` are tab texts of sheets that become ours."""
+    ours = {sheet.name.casefold() for sheet in package.sheets if sheet.ours} | {tab.casefold() for tab in becoming}
     text = mark.texts(package.defined_names, mark.NAMES).get("", "")
-    return {name.casefold() for name in text.split(",") if name}
+    return Ownership(
+        frozenset(ours),
+        frozenset(sheet.name.casefold() for sheet in package.sheets) - ours,
+        frozenset(name.casefold() for name in text.split(",") if name),
+    )
 
 
-def is_ours(name: Name, our_tabs: set[str], recorded: set[str]) -> bool:
-    """Whether we put a name in: it is on record, or it speaks of nothing but our sheets (`our_tabs`, case aside)."""
-    mentioned = {tab.casefold() for tab in names.sheets_mentioned(name.refers_to)}
-    return mentioned <= our_tabs and (bool(mentioned) or name.name.casefold() in recorded)
+def refuse_foreign(package: Package, wanted: Iterable[DefinedName], becoming: Iterable[str]) -> None:
+    """Refuse if the user has a name, or an Excel table, called like one of `wanted`.
 
-
-def refuse_foreign(package: Package, wanted: Iterable[DefinedName], our_tabs: set[str]) -> None:
-    """Refuse if the user has a name, or an Excel table, called like one of `wanted`."""
-    recorded = recorded_names(package)
+    `becoming` are the tab texts of sheets that become ours.
+    """
+    owned = ownership(package, becoming)
     present = {each.name.casefold(): each for each in package.defined_names if each.scope is None}
     tables = _table_names(package)
     for name in wanted:
         key = name.name.casefold()
-        if key in present and not is_ours(present[key], our_tabs, recorded):
+        if key in present and not owned.has(present[key]):
             raise FileRefused(say("name-not-ours", name=name.name, refers_to=present[key].refers_to[:80]))
         if key in tables:
             raise FileRefused(say("name-not-ours", name=name.name, refers_to=f'a table on "{tables[key]}"'))
@@ -90,17 +116,15 @@ def renew(
 def _drop_old(
     workbook: etree._Element, package: Package, sheets: Sequence[Marked], wanted: Sequence[DefinedName]
 ) -> None:
-    tabs = {each.name.casefold() for each in package.sheets if each.ours} | {each.tab.casefold() for each in sheets}
-    recorded = recorded_names(package)
+    owned = ownership(package, (each.tab for each in sheets))
     replaced = {each.name.casefold() for each in wanted}
     touched = {f"{kind}{mark.coded(each.role)}".casefold() for each in sheets for kind in (mark.SHEET, mark.LAID)}
     resting = (mark.SHEET, mark.LAID)
     gone = set()
     for name in names.read_names(workbook):
         key = name.name.casefold()
-        of_people = key in replaced or (key in recorded and is_ours(name, tabs, recorded))
         hidden = key in touched or (mark.is_ours(key) and not key.startswith(resting))
-        if name.scope is None and (of_people or hidden):
+        if name.scope is None and (key in replaced or hidden or owned.put_in(name)):
             gone.add(name.key)
     for each in sheets:
         position = workbook_part.position_of(workbook, each.relation)
@@ -111,11 +135,6 @@ def _drop_old(
 
 def drop_all(workbook: etree._Element, package: Package) -> None:
     """Take out every name of ours, and the marks that a copy of a sheet of ours took along."""
-    tabs = {each.name.casefold() for each in package.sheets if each.ours}
-    recorded = recorded_names(package)
-    gone = set()
-    for name in names.read_names(workbook):
-        of_people = name.scope is None and name.name.casefold() in recorded and is_ours(name, tabs, recorded)
-        if of_people or mark.is_ours(name.name):
-            gone.add(name.key)
-    names.drop_names(workbook, gone)
+    owned = ownership(package)
+    present = names.read_names(workbook)
+    names.drop_names(workbook, {name.key for name in present if mark.is_ours(name.name) or owned.put_in(name)})
