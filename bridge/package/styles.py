@@ -260,7 +260,7 @@ class Styles:
         font = list(_items(holder))[style].get("fontId", "")
         fonts = self._lists["fonts"].element
         items = [] if fonts is None else list(_items(fonts))
-        if not font.isdecimal() or len(font) > 8 or int(font) >= len(items):
+        if not font.isdecimal() or len(font) > 8 or int(font) >= min(len(items), self.before["fonts"]):
             return 1.0
         return 7 / digit_width(items[int(font)])
 
