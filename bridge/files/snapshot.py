@@ -21,8 +21,12 @@ LIMIT_BYTES = 1 << 30
 _TRIES = 3
 
 
+# What may be different in a moment.
+PASSING = frozenset({"file-missing", "file-being-saved", "file-not-whole"})
+
+
 class NotWhole(FileRefused):
-    """The file is not whole at this moment; looking again later may help."""
+    """The file is not whole at this moment (its problem's key is one of `PASSING`); looking again later may help."""
 
 
 @dataclass(frozen=True, slots=True)

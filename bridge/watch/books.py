@@ -129,7 +129,10 @@ class Books:
         Anything newer than that version is due in its turn. Without `found`, what was handed on counts as dealt with.
         """
         book = self.by_real.get(real)
-        if book is None or state is None:
+        if book is None:
+            return None
+        if state is None:  # not there just now: when it is back, even as it was, it is looked at
+            self._stir(book, now)
             return book
         if book.phase is Phase.SETTLING:  # changed since: the quiet time decides, and knows the version by its bytes
             book.handled = found or book.handled

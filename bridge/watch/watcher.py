@@ -9,6 +9,7 @@ from __future__ import annotations
 
 import queue
 import signal
+import sys
 import threading
 import time
 from collections.abc import Mapping, Sequence
@@ -29,6 +30,8 @@ from bridge.watch.screen import Line, Screen
 
 _CLAIMED_PAUSE_S, _CHANGED_PAUSE_S, _TORN_PAUSE_S = 1.0, 0.5, 1.0
 _REDRAW_S = 0.2
+# Windows hears Ctrl+C only between two waits.
+_LONGEST_PAUSE_S = 1.0 if sys.platform == "win32" else None
 _FITTED = ("fitted", "laid out", "beside")
 _HELD = ("waiting", "beside")
 _PASSING = {"claimed": _CLAIMED_PAUSE_S, "changed": _CHANGED_PAUSE_S, "not whole": _TORN_PAUSE_S}
@@ -111,7 +114,7 @@ class Watcher:
             self._draw()
 
     def _pause(self) -> float | None:
-        pauses = [self._pool.next_look, _REDRAW_S if self._changed and self._screen.live else None]
+        pauses = [self._pool.next_look, _REDRAW_S if self._changed and self._screen.live else None, _LONGEST_PAUSE_S]
         return min((pause for pause in pauses if pause is not None), default=None)
 
     def _hear(self, told: news.News) -> None:
@@ -249,7 +252,8 @@ class Watcher:
         seconds = report.get("seconds")
         took = f" in {seconds:.2f} s" if isinstance(seconds, float) else ""
         where = f" {report.get('kind')} at {report.get('where')}" if outcome == "failed" else ""
-        self._log.info("%s: %s%s%s", entry.path, outcome, took, where)
+        said = "".join(f" ({report[name]})" for name in ("key", "note") if report.get(name))
+        self._log.info("%s: %s%s%s%s", entry.path, outcome, took, where, said)
 
     def _draw(self) -> None:
         busy = sum(entry.state == "fitting" for entry in self._entries.values())

@@ -3,8 +3,9 @@
 Takes requests and gives answers as lines of JSON on its standard streams, one workbook at a time, and stays warm in
 between. Ends when its input ends; on SIGTERM it rolls back what it is in the middle of, and ends.
 
-The function is called as `function(path, while_open, note)` and returns a mapping: `outcome`, `message`,
-`fingerprint` (of the workbook as it is now, where known), `seconds`, `stages`.
+The function is called as `function(path, while_open, note)` and returns a mapping: `outcome`; `message`, shown to
+people; `note`, the part of it that comes from write-back and may go into the log; `fingerprint` of the workbook as it
+is now, where known; `seconds`, `stages`. It may raise FileRefused.
 """
 
 from __future__ import annotations
@@ -23,7 +24,7 @@ from typing import TextIO
 
 from bridge.files import claim
 from bridge.files.fingerprint import Fingerprint
-from bridge.files.snapshot import NotWhole
+from bridge.files.snapshot import PASSING
 from bridge.messages import FileRefused, say
 
 Job = Callable[[str, str, str], Mapping[str, object]]
@@ -55,10 +56,9 @@ def take_turn(job: Job, path: str, while_open: str, note: str) -> Mapping[str, o
             answer["fingerprint"] = found.as_dict()
     except claim.Claimed as other:
         answer = {"outcome": "claimed", "message": f"{other.owner.user} on {other.owner.host}" if other.owner else ""}
-    except NotWhole as torn:
-        answer = {"outcome": "not whole", "message": torn.problem.text}
     except FileRefused as refusal:
-        answer = {"outcome": "refused", "message": refusal.problem.text}
+        outcome = "not whole" if refusal.problem.key in PASSING else "refused"
+        answer = {"outcome": outcome, "message": refusal.problem.text, "key": refusal.problem.key}
     except MemoryError:
         answer = {"outcome": "too large"}
     except Exception as error:

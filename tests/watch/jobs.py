@@ -76,7 +76,8 @@ def repeat(path: str, while_open: str, note: str) -> Mapping[str, object]:
         put = write_back(snapshot, with_result(snapshot.data, note), while_open)
         if put.kind != "changed":
             outcome = "fitted" if put.kind == "written" else put.kind.value
-            return {"outcome": outcome, "message": put.note, "fingerprint": put.fingerprint, "made_from": made_from}
+            told = {"outcome": outcome, "message": f"secret {put.note}", "note": put.note}
+            return told | {"fingerprint": put.fingerprint, "made_from": made_from}
     return {"outcome": "changed"}
 
 

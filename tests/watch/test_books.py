@@ -164,3 +164,11 @@ def test_again_after_a_pause():
     kept.again("/b", 2.0, pause=1.0)
     assert due(kept, 2.9) == []
     assert due(kept, 3.0) == ["/b"]
+
+
+def test_answered_while_it_was_away():
+    kept = books()
+    kept.seen("/b", at(1), 0.0)
+    ask(kept, 1.0)
+    kept.answered("/b", None, None, 2.0)
+    assert due(kept, 2.31) == ["/b"]

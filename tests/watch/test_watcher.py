@@ -326,7 +326,7 @@ def test_open_in_a_program_that_locks_goes_in_when_closed(watching, folder, tmp_
         elsewhere.rename(path)  # so that it is open from its first moment here
         eventually(lambda: jobs.matches(copy))
         assert not jobs.matches(path)
-        assert "a - fit.xlsx" in running.said
+        eventually(lambda: "a - fit.xlsx" in running.said)
         time.sleep(1.0)
         assert not jobs.matches(path)
         assert running.logged(" - fit.xlsx: ") == 0, "the copy itself is not watched"
@@ -344,6 +344,8 @@ def test_waiting_goes_in_when_closed(watching, folder):
     mark.write_text(",ann,elsewhere,01.12.2026 08:47,file:///p;")
     path.write_bytes(saved(2))
     eventually(lambda: running.logged(": waiting"))
+    assert running.logged("go in when it is closed"), "what write-back says is in the log"
+    assert "secret" not in running.log.read_text(), "what the job says is not"
     time.sleep(0.8)
     assert not jobs.matches(path)
     mark.unlink()
