@@ -8,8 +8,21 @@ from bridge.package.draft import Draft
 from bridge.package.package import Package, SheetEntry
 from bridge.package.user_objects import standing
 
-# What of a removed sheet nobody misses: it belongs to the sheet's look, not to the user's work.
-_NOT_MISSED = ("column widths", "a print area", "repeated print rows", "page breaks", "sheet protection")
+# What of a removed sheet nobody misses: it belongs to the sheet's look or to its cells, which go too.
+_NOT_MISSED = frozenset(
+    {
+        "column widths",
+        "a print area",
+        "repeated print rows",
+        "page breaks",
+        "sheet protection",
+        "a header or footer",
+        "a background picture",
+        "custom properties",
+        "a named view",
+        "a link",
+    }
+)
 
 
 class Amendment:

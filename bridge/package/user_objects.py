@@ -15,6 +15,9 @@ Decided per kind:
                    formats, data validation, filters, sorting, groups, hidden rows and columns, row heights,
                    margins and orientation, printer settings, custom views' settings for the sheet
 
+Where a sheet of ours is taken out (strip), charts, pictures, drawn objects, comments and whatever is in the way above
+stop that too; the rest goes with the sheet.
+
 Our own charts are told by their names; where a program lost those, by the cells they plot.
 """
 

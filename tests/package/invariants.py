@@ -384,7 +384,7 @@ def _ours(root: etree._Element | None) -> Iterator[str]:
             yield f"{where} uses the shared texts"
         if cell.get("s") is None:
             yield f"{where} has no format of its own"
-        if "f" in kinds and (kinds != ["f", "v"] or not "".join(cell[1].itertext())):
+        if "f" in kinds and (kinds != ["f", "v"] or (cell.get("t") != "str" and not "".join(cell[1].itertext()))):
             yield f"{where} is a formula without a stored value"
         if "v" in kinds and cell.get("t") is None:
             text = "".join(cell[-1].itertext())

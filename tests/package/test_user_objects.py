@@ -302,6 +302,11 @@ def test_strip_does_not_take_the_users_objects_along() -> None:
     assert "a chart" in refusal.value.problem.text
 
 
+def test_strip_is_not_stopped_by_what_belongs_to_the_sheets_look() -> None:
+    data = with_element("<headerFooter><oddHeader>&amp;CMy firm</oddHeader></headerFooter>", "<ignoredErrors")
+    assert "fit rows" not in [tab for tab, _ in zips.sheet_parts(zips.members(strip(Package.open(data))))]
+
+
 # --- reading the part without its rows -----------------------------------------------------------------------------
 
 
