@@ -55,7 +55,7 @@ def graft(
 
     Raises FileRefused, with nothing changed: a sheet or a name of the user's has one of our names; something of the
     user's stands on a sheet in the way; too many cell formats; a damaged part. Raises ValueError where a sheet's
-    `title` is not what its tab says, or the format cannot hold what a sheet asks for.
+    `title` is not what its tab says, a name can be none, or the format cannot hold what a sheet asks for.
     """
     places = _places(package, sheets, adopt)
     our_names.refuse_foreign(package, names, [place.tab for place in places])

@@ -64,12 +64,14 @@ def ownership(package: Package, becoming: Iterable[str] = ()) -> Ownership:
 def refuse_foreign(package: Package, wanted: Iterable[DefinedName], becoming: Iterable[str]) -> None:
     """Refuse if the user has a name, or an Excel table, called like one of `wanted`.
 
-    `becoming` are the tab texts of sheets that become ours.
+    `becoming` are the tab texts of sheets that become ours. Raises ValueError for what can be no name at all.
     """
     owned = ownership(package, becoming)
     present = {each.name.casefold(): each for each in package.defined_names if each.scope is None}
     tables = _table_names(package)
     for name in wanted:
+        if not names.is_valid(name.name):
+            raise ValueError(f"{name.name!r} can be no defined name")
         key = name.name.casefold()
         if key in present and not owned.has(present[key]):
             raise FileRefused(say("name-not-ours", name=name.name, refers_to=present[key].refers_to[:80]))

@@ -7,7 +7,6 @@ same item looks different in canonical XML when the part uses a namespace prefix
 
 from __future__ import annotations
 
-import math
 import re
 import zlib
 from collections.abc import Iterator
@@ -16,6 +15,7 @@ from dataclasses import dataclass
 from lxml import etree
 
 from bridge.messages import FileRefused, say
+from bridge.package import style_items
 from bridge.package.xml import (
     child,
     children,
@@ -169,7 +169,7 @@ class Styles:
     def dxf(self, format_: Format) -> int:
         """The index for a highlight's `dxfId`."""
         if format_ not in self._dxfs:
-            self._dxfs[format_] = self._lists["dxfs"].number_of(self._built(_dxf(format_)))
+            self._dxfs[format_] = self._lists["dxfs"].number_of(self._built(style_items.dxf(format_)))
         return self._dxfs[format_]
 
     def _new_xf(self, format_: Format) -> int:
@@ -196,15 +196,15 @@ class Styles:
         self._lists["cellXfs"].append(item, key(item))
 
     def _xf(self, format_: Format) -> str:
-        font = self._lists["fonts"].number_of(self._built(_font(format_)))
-        fill = self._lists["fills"].number_of(self._built(_fill(format_)))
-        border = self._lists["borders"].number_of(self._built(_border(format_)))
+        font = self._lists["fonts"].number_of(self._built(style_items.font(format_)))
+        fill = self._lists["fills"].number_of(self._built(style_items.fill(format_)))
+        border = self._lists["borders"].number_of(self._built(style_items.border(format_)))
         normal = self._normal()
         return (
             f'<xf numFmtId="{self._number_format(format_.number_format)}" fontId="{font}" fillId="{fill}" '
             f'borderId="{border}"{"" if normal is None else f" xfId={chr(34)}{normal}{chr(34)}"} '
             'applyNumberFormat="1" applyFont="1" applyFill="1" applyBorder="1" applyAlignment="1" applyProtection="1">'
-            f'{_alignment(format_)}<protection locked="{int(format_.locked)}"/></xf>'
+            f'{style_items.alignment(format_)}<protection locked="{int(format_.locked)}"/></xf>'
         )
 
     def _normal(self) -> int | None:
@@ -262,7 +262,7 @@ class Styles:
         items = [] if fonts is None else list(_items(fonts))
         if not font.isdecimal() or len(font) > 8 or int(font) >= min(len(items), self.before["fonts"]):
             return 1.0
-        return 7 / digit_width(items[int(font)])
+        return 7 / style_items.digit_width(items[int(font)])
 
     def record(self) -> str:
         """What `ours` needs to tell our items from the user's."""
@@ -272,92 +272,6 @@ class Styles:
 
 _PLAIN_FONT = '<font><sz val="11"/><name val="Calibri"/><family val="2"/></font>'
 _PLAIN_BORDER = "<border><left/><right/><top/><bottom/><diagonal/></border>"
-
-
-def digit_width(font: etree._Element) -> int:
-    """Pixels at 96 per inch of the widest digit of a font, from its size and what is known of its design."""
-    size_element, name_element = child(font, "sz"), child(font, "name")
-    try:
-        size = float("" if size_element is None else size_element.get("val", ""))
-    except ValueError:
-        size = 11.0
-    if not math.isfinite(size) or not 4 <= size <= 40:
-        return 7
-    name = ("" if name_element is None else name_element.get("val", "")).casefold()
-    return max(3, round(size * 96 / 72 * _DIGIT_EM.get(name, 0.507)))
-
-
-# Advance width of the digits in ems, from the fonts' own tables (from memory, to three digits).
-_DIGIT_EM = {
-    "arial": 0.556,
-    "helvetica": 0.556,
-    "liberation sans": 0.556,
-    "verdana": 0.636,
-    "tahoma": 0.546,
-    "segoe ui": 0.539,
-    "cambria": 0.554,
-    "courier new": 0.6,
-    "consolas": 0.55,
-    "aptos narrow": 0.5,
-}
-
-
-# --- items ---------------------------------------------------------------------------------------------------------
-
-
-def _size(size: float) -> str:
-    return f"{size:g}"
-
-
-def _rgb(tag: str, colour: str) -> str:
-    return f'<{tag} rgb="FF{colour.upper()}"/>'
-
-
-def _font(format_: Format) -> str:
-    flags = "".join(
-        tag for tag, on in (("<b/>", format_.bold), ("<i/>", format_.italic), ("<u/>", format_.underline)) if on
-    )
-    colour = _rgb("color", format_.color) if format_.color else ""
-    return f'<font>{flags}<sz val="{_size(format_.size)}"/>{colour}<name val="{format_.font}"/><family val="2"/></font>'
-
-
-def _fill(format_: Format) -> str:
-    if not format_.fill:
-        return '<fill><patternFill patternType="none"/></fill>'
-    colour = _rgb("fgColor", format_.fill)
-    return f'<fill><patternFill patternType="solid">{colour}<bgColor indexed="64"/></patternFill></fill>'
-
-
-def _edge(tag: str, style: str | None, colour: str) -> str:
-    return f'<{tag} style="{style}">{_rgb("color", colour)}</{tag}>' if style else f"<{tag}/>"
-
-
-def _border(format_: Format) -> str:
-    top = _edge("top", format_.border_top, format_.border_color)
-    bottom = _edge("bottom", format_.border_bottom, format_.border_color)
-    return f"<border><left/><right/>{top}{bottom}<diagonal/></border>"
-
-
-def _alignment(format_: Format) -> str:
-    horizontal = format_.align or ("left" if format_.indent else None)
-    attributes = [
-        f'horizontal="{horizontal}"' if horizontal else "",
-        f'vertical="{format_.valign}"' if format_.valign else "",
-        'wrapText="1"' if format_.wrap else "",
-        f'indent="{format_.indent}"' if format_.indent else "",
-    ]
-    return f"<alignment {' '.join(each for each in attributes if each)}/>"
-
-
-def _dxf(format_: Format) -> str:
-    """A differential format: only what a highlight changes."""
-    flags = "".join(tag for tag, on in (("<b/>", format_.bold), ("<i/>", format_.italic)) if on)
-    colour = _rgb("color", format_.color) if format_.color else ""
-    font = f"<font>{flags}{colour}</font>" if flags or colour else ""
-    fill = f"<fill><patternFill>{_rgb('bgColor', format_.fill)}</patternFill></fill>" if format_.fill else ""
-    edge = _edge("bottom", format_.border_bottom, format_.border_color)
-    border = f"<border>{edge}</border>" if format_.border_bottom else ""
-    return f"<dxf>{font}{fill}{border}</dxf>"
 
 
 # --- taking our items out again --------------------------------------------------------------------------------------

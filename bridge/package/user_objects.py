@@ -23,36 +23,23 @@ Our own charts are told by their names; where a program lost those, by the cells
 
 from __future__ import annotations
 
-import copy
 import re
 from collections import Counter
-from collections.abc import Iterable, Iterator, Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 
 from lxml import etree
 
 from bridge.messages import FileRefused, say
-from bridge.package import drawing, mark, xml
+from bridge.package import drawing, mark, outline, xml
 from bridge.package.archive import part_key, unpacked
 from bridge.package.charts import fingerprint_in
-from bridge.package.limits import Limits
 from bridge.package.mark import LaidOut
 from bridge.package.names import PRINT_AREA, PRINT_TITLES, Name, without_sheets
 from bridge.package.package import Package, SheetEntry, relation_id
 from bridge.package.relationships import Relationship
-from bridge.package.worksheet import A4, Kept
+from bridge.package.worksheet import Kept
 
-_KEPT_ELEMENTS = (
-    "sheetProtection",
-    "protectedRanges",
-    "headerFooter",
-    "rowBreaks",
-    "colBreaks",
-    "customProperties",
-    "legacyDrawing",
-    "legacyDrawingHF",
-    "picture",
-)
 # Relationships that belong to a sheet without any element that says so.
 _SILENT = {"comments": "a comment", "threadedComment": "a threaded comment", "namedSheetView": "a named view"}
 _CARRIED = ("drawing", "vmlDrawing", "image", "customProperty", "hyperlink", *_SILENT)
@@ -78,7 +65,6 @@ _IN_THE_WAY_ELEMENTS = {
     "tableParts": "an Excel table",
 }
 _SAME_WIDTH = 0.3  # characters; programs round a width they save again
-_MOST_COLUMNS = 1000
 _ENOUGH_COLUMNS = 3
 
 
@@ -134,12 +120,12 @@ def standing(package: Package, entry: SheetEntry, new_widths: Mapping[int, float
     `new_widths` are the widths a new layout states; a width the user set is kept where the layout did not change it.
     """
     member = package.parts[part_key(entry.part)]
-    root = xml.parse(without_rows(unpacked(member, package.limits.member), entry.part, package.limits), entry.part,
-                     package.limits)  # fmt: skip
+    pieces = unpacked(member, package.limits.member)
+    root = xml.parse(outline.without_rows(pieces, entry.part, package.limits), entry.part, package.limits)
     record = _record(package, entry)
     relations = package.relationships(entry.part)
     on_drawing = _drawing(package, entry, root, relations, record)
-    fragments, links = _fragments(root), _outside_links(root)
+    fragments, links = outline.fragments(root), outline.outside_links(root)
     used = {each for text in (*fragments.values(), *links) for each in xml.relation_attributes(etree.fromstring(text))}
     stay = tuple(each for each in relations if each.id in used or each.kind in _SILENT)
     widths = _user_widths(root, record, new_widths)
@@ -150,10 +136,10 @@ def standing(package: Package, entry: SheetEntry, new_widths: Mapping[int, float
     found.elements(root, fragments, links)
     found.rest(widths, own_print)
     kept = Kept(
-        selected=entry.position == package.active_tab and entry.state == "visible" and _selected(root),
-        zoom=_zoom(root),
-        code_name=_attribute(root, "sheetPr", "codeName"),
-        paper=_paper(root),
+        selected=entry.position == package.active_tab and entry.state == "visible" and outline.is_selected(root),
+        zoom=outline.zoom(root),
+        code_name=outline.attribute(root, "sheetPr", "codeName"),
+        paper=outline.paper(root),
         widths=widths,
         fragments=fragments,
         links=links,
@@ -178,34 +164,6 @@ def _record(package: Package, entry: SheetEntry) -> LaidOut | None:
         return None
     text = mark.texts(package.defined_names, mark.LAID).get(mark.coded(entry.ours))
     return None if text is None else mark.laid_out(text)
-
-
-# --- the part without its rows -------------------------------------------------------------------------------------
-
-_ROWS_BEGIN = re.compile(rb"<((?:[\w.-]+:)?)sheetData(?:\s[^>]*?)?(/?)>")
-_ROWS_END = re.compile(rb"</(?:[\w.-]+:)?sheetData\s*>")
-
-
-def without_rows(pieces: Iterable[bytes], part: str, limits: Limits) -> bytes:
-    """A worksheet's text with its rows left out, so that a long sheet is never held as a tree or as a whole."""
-    head, text, skipping, skipped = b"", b"", False, False
-    for piece in pieces:
-        text += piece
-        if not skipped and not skipping:
-            begin = _ROWS_BEGIN.search(text)
-            if begin and begin[2]:
-                skipped = True
-            elif begin:
-                head, text, skipping = text[: begin.end()], text[begin.end() :], True
-        if skipping:
-            end = _ROWS_END.search(text)
-            if end:
-                text, skipping, skipped = head + text[end.start() :], False, True
-            else:
-                text = text[-64:]
-        if len(text) > limits.part:
-            raise FileRefused(say("unpacks-too-big", member=part))
-    return head + text if skipping else text
 
 
 # --- drawings ------------------------------------------------------------------------------------------------------
@@ -277,92 +235,7 @@ def _fingerprint(package: Package, part: str | None) -> str:
         return ""
 
 
-# --- elements ------------------------------------------------------------------------------------------------------
-
-
-def _clean(element: etree._Element) -> str:
-    """An element as text, free of extensions that the new part's root would have to announce."""
-    holder = etree.Element("holder")
-    inner = copy.deepcopy(element)
-    inner.tail = None
-    main = xml.namespace(element)
-    for each in list(inner.iter()):
-        if not isinstance(each.tag, str) or xml.namespace(each) != main:
-            if each is not inner:
-                xml.remove_element(each)
-            continue
-        for name in list(each.attrib):
-            space = etree.QName(name).namespace
-            if space and xml.transitional(space) != xml.OFFICE_RELS:
-                del each.attrib[name]
-    holder.append(inner)
-    etree.cleanup_namespaces(holder)
-    return etree.tostring(inner, encoding="unicode")
-
-
-def _fragments(root: etree._Element) -> dict[str, str]:
-    found = {}
-    for name in _KEPT_ELEMENTS:
-        element = xml.child(root, name)
-        if element is not None and _says_something(name, element):
-            found[name] = _clean(element)
-    return found
-
-
-def _says_something(name: str, element: etree._Element) -> bool:
-    """An empty header and footer is what programs write when there is none."""
-    return name != "headerFooter" or any((text or "").strip() for text in element.itertext())
-
-
-def _outside_links(root: etree._Element) -> tuple[str, ...]:
-    holder = xml.child(root, "hyperlinks")
-    links = () if holder is None else xml.children(holder, "hyperlink")
-    return tuple(_clean(each) for each in links if relation_id(each))
-
-
-def _attribute(root: etree._Element, element: str, name: str) -> str:
-    found = xml.child(root, element)
-    return "" if found is None else found.get(name, "")
-
-
-def _view(root: etree._Element) -> etree._Element | None:
-    views = xml.child(root, "sheetViews")
-    return None if views is None else xml.child(views, "sheetView")
-
-
-def _selected(root: etree._Element) -> bool:
-    view = _view(root)
-    return view is not None and view.get("tabSelected") in ("1", "true", "on")
-
-
-def _zoom(root: etree._Element) -> str:
-    view = _view(root)
-    zoom = "" if view is None else view.get("zoomScale", "")
-    return zoom if zoom.isdecimal() and len(zoom) < 4 and 10 <= int(zoom) <= 400 and zoom != "100" else ""
-
-
-def _paper(root: etree._Element) -> str:
-    setup = xml.child(root, "pageSetup")
-    if setup is None:
-        return A4
-    paper = setup.get("paperSize", "")
-    return paper if paper.isdecimal() and len(paper) < 4 else ""
-
-
 # --- widths and print area -----------------------------------------------------------------------------------------
-
-
-def _stated_widths(root: etree._Element) -> Iterator[tuple[int, float]]:
-    holder = xml.child(root, "cols")
-    for column in () if holder is None else xml.children(holder, "col"):
-        try:
-            first, last = int(column.get("min", "")), int(column.get("max", ""))
-            width = float(column.get("width", ""))
-        except ValueError:
-            continue
-        if column.get("customWidth") in ("1", "true", "on") and 0 < width <= 255 and first <= last:
-            for number in range(max(1, first), min(last, _MOST_COLUMNS) + 1):
-                yield number - 1, width
 
 
 def _user_widths(
@@ -372,7 +245,7 @@ def _user_widths(
     if record is None:
         return {}
     new = record.widths if new_widths is None else new_widths
-    stated = dict(_stated_widths(root))
+    stated = dict(outline.custom_widths(root))
     factor = _programs_factor(stated, record.widths)
     kept = {}
     for column, width in stated.items():

@@ -6,12 +6,12 @@ from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field
 
 from bridge.package import xml
+from bridge.package.outline import A4
 from bridge.package.rows import FormatIndex, sheet_rows, used_range
 from bridge.package.styles import Styles
 from bridge.page.cells import address
 from bridge.page.sheet import DropDown, Highlight, Link, Sheet
 
-A4 = "9"
 _DEFAULT_WIDTH = 9.14
 _MOST_LIST_TEXT = 255
 

@@ -238,6 +238,11 @@ def test_names_of_models_that_are_gone_go_and_repointed_ones_stay() -> None:
         graft(Package.open(once), samples.sheets(), samples.names(), {})
 
 
+def test_what_can_be_no_name_is_a_programming_error() -> None:
+    with pytest.raises(ValueError, match="no defined name"):
+        graft(Package.open(PLAIN), [], [DefinedName("fit A n", "1")], {})
+
+
 def test_a_name_without_a_cell_is_ours_by_record() -> None:
     constant = [DefinedName("fit_A_n", "17")]
     once = graft(Package.open(PLAIN), [samples.rows_sheet()], constant, {})

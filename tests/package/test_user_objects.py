@@ -14,9 +14,10 @@ from openpyxl.comments import Comment
 from bridge.messages import FileRefused
 from bridge.package.graft import graft
 from bridge.package.limits import Limits
+from bridge.package.outline import without_rows
 from bridge.package.package import Package
 from bridge.package.strip import strip
-from bridge.package.user_objects import UserObject, user_objects, without_rows
+from bridge.package.user_objects import UserObject, user_objects
 from tests.package import samples, synthetic, zips
 from tests.package.invariants import faults
 
