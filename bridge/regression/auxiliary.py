@@ -1,4 +1,4 @@
-"""Auxiliary regressions of the tests: how much of a series other columns explain."""
+"""Auxiliary regressions of the tests: how much of a series other columns explain; the rows that they are judged on."""
 
 from __future__ import annotations
 
@@ -6,20 +6,48 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.linalg import qr
 
+from bridge.regression.kernel import Kernel, basis_rows
+
 INDEPENDENT = 1e-9  # a pivot below this, relative to the largest, belongs to a column that adds nothing
 
+SEED = 20_260_102
+
 Array = NDArray[np.float64]
+Rows = NDArray[np.intp]
 
 
-def spanned(columns: Array) -> Array:
-    """An orthonormal basis (n, rank) of columns (n, k), each scaled to length 1 first; zero columns add nothing."""
+def orthonormal(kernel: Kernel, rows: slice | Rows) -> Array:
+    """The rows asked for of Q = sqrt(W) X R^-1, shape (k, p). Use blocks of a few thousand rows for many rows."""
+    q = basis_rows(kernel, rows)
+    return q if kernel.weights is None else q * np.sqrt(kernel.weights[rows])[:, None]
+
+
+def even_sample(n: int, most: int) -> Rows:
+    """At most so many of n rows, in order: one from each stretch of equal length, at a fixed random place in it.
+
+    A fixed stride would meet what repeats along the rows always at the same point.
+    """
+    stride = -(-n // most)
+    if stride == 1:
+        return np.arange(n)
+    starts = np.arange(0, n, stride)
+    lengths = np.minimum(starts + stride, n) - starts
+    found: Rows = starts + np.random.Generator(np.random.PCG64(SEED)).integers(0, lengths)
+    return found
+
+
+def spanned(columns: Array, least: float = INDEPENDENT) -> Array:
+    """An orthonormal basis (n, rank) of columns (n, k), each scaled to length 1 first; zero columns add nothing.
+
+    `least`: the pivot, relative to the largest, at which a column still adds something.
+    """
     lengths = np.sqrt(np.sum(columns**2, axis=0))
     kept = columns[:, lengths > 0] / lengths[lengths > 0]
     if kept.shape[1] == 0:
         return np.empty((len(columns), 0))
     q, r, _ = qr(kept, mode="economic", pivoting=True, check_finite=False)
     size = np.abs(np.diag(r))
-    found: Array = q[:, size > INDEPENDENT * size[0]]
+    found: Array = q[:, size > least * size[0]]
     return found
 
 

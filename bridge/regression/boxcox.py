@@ -7,7 +7,8 @@ from collections.abc import Callable
 import numpy as np
 from numpy.typing import NDArray
 
-from bridge.regression.kernel import Kernel, basis_rows
+from bridge.regression.auxiliary import even_sample, orthonormal
+from bridge.regression.kernel import Kernel
 from bridge.regression.results import BoxCox
 
 FARTHEST = 3.0  # powers beyond this are not looked at
@@ -41,9 +42,9 @@ def profile(kernel: Kernel, observed: Array) -> BoxCox | None:
 
 def _likelihood(kernel: Kernel, observed: Array) -> Callable[[float], float]:
     """The profile log likelihood, up to a constant, as a function of the power."""
-    rows = np.arange(0, kernel.n, -(-kernel.n // MOST_ROWS))
+    rows = even_sample(kernel.n, MOST_ROWS)
     weight = np.ones(len(rows)) if kernel.weights is None else np.sqrt(kernel.weights[rows])
-    q = basis_rows(kernel, rows) * weight[:, None]
+    q = orthonormal(kernel, rows)
     if len(rows) < kernel.n:
         q, _ = np.linalg.qr(q)
     log_y = np.log(observed[rows])

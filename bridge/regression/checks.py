@@ -14,12 +14,13 @@ from scipy import special
 
 from bridge.regression import durbinwatson, normality
 from bridge.regression.anova import ratio
-from bridge.regression.auxiliary import explained, spanned
+from bridge.regression.auxiliary import Rows, even_sample, explained, orthonormal, spanned
 from bridge.regression.covariance import default_lags
-from bridge.regression.kernel import Kernel, basis_rows
+from bridge.regression.kernel import Kernel
 from bridge.regression.results import Check
 from bridge.regression.spec import Levels, ModelSpec, Observations
 from bridge.regression.tails import f_upper
+from bridge.regression.threads import over_blocks
 
 MOST_WHITE = 60  # columns of White's auxiliary regression; with more the pruned form serves
 MOST_ROWS = 50_000  # above, an even sample of the rows serves for the tests of spread and form
@@ -32,21 +33,21 @@ def run(kernel: Kernel, spec: ModelSpec, observations: Observations) -> tuple[Ch
     """Every test that applies, in the order in which they are told."""
     if kernel.rss == 0 or kernel.residual_sd == 0:
         return ()
-    rows = np.arange(0, kernel.n, -(-kernel.n // MOST_ROWS))
+    rows = even_sample(kernel.n, MOST_ROWS)
     weight = np.ones(kernel.n) if kernel.weights is None else np.sqrt(kernel.weights)
     residual = kernel.residual * weight
     found = [_spread(kernel, residual, rows), _spread_any_form(kernel, residual, rows), normality.check(residual)]
     order = in_order(spec, observations)
-    found.append(_serial(kernel, residual, weight, order, ordered=spec.order is not None))
+    found.append(_serial(kernel, residual, order, ordered=spec.order is not None))
     if spec.order is not None:
-        found.append(_serial_order(kernel, residual, weight, order, spec.lags))
+        found.append(_serial_order(kernel, residual, order, spec.lags))
     found.append(_form(kernel, residual, weight, rows))
     if kernel.sums.pure_error is not None:
         found.append(_lack_of_fit(kernel))
     return tuple(found)
 
 
-def in_order(spec: ModelSpec, observations: Observations) -> NDArray[np.intp]:
+def in_order(spec: ModelSpec, observations: Observations) -> Rows:
     """The rows (n,) sorted by the order column, equal ones as they stand; without one, as they stand."""
     if spec.order is None:
         return np.arange(observations.n)
@@ -54,20 +55,20 @@ def in_order(spec: ModelSpec, observations: Observations) -> NDArray[np.intp]:
     return np.argsort(column.codes if isinstance(column, Levels) else column, kind="stable")
 
 
-def _sampled(kernel: Kernel, rows: NDArray[np.intp]) -> str:
-    return f"judged on an even sample of {len(rows):,} rows" if len(rows) < kernel.n else ""
+def _sampled(kernel: Kernel, rows: Rows) -> str:
+    return f"judged on {len(rows):,} rows spread evenly" if len(rows) < kernel.n else ""
 
 
 # --- spread ----------------------------------------------------------------------------------------
 
 
-def _spread(kernel: Kernel, residual: Array, rows: NDArray[np.intp]) -> Check:
+def _spread(kernel: Kernel, residual: Array, rows: Rows) -> Check:
     """Breusch & Pagan's test in Koenker's (1981) form: n R2 of the squared residuals on the design's columns."""
     r2, df = explained(kernel.x[rows], residual[rows] ** 2)
     return _lagrange("spread", "Breusch-Pagan, Koenker's form", r2 * len(rows), df, "Koenker 1981", kernel, rows)
 
 
-def _spread_any_form(kernel: Kernel, residual: Array, rows: NDArray[np.intp]) -> Check:
+def _spread_any_form(kernel: Kernel, residual: Array, rows: Rows) -> Check:
     """White's (1980) test: also squares and products of the columns; with too many, of the fitted values only."""
     slopes = kernel.x[rows][:, int(kernel.intercept) :]
     wide = slopes.shape[1] * (slopes.shape[1] + 3) // 2
@@ -84,9 +85,7 @@ def _spread_any_form(kernel: Kernel, residual: Array, rows: NDArray[np.intp]) ->
     return _lagrange("spread_any_form", method, r2 * len(rows), df, source, kernel, rows)
 
 
-def _lagrange(
-    key: str, method: str, statistic: float, df: int, source: str, kernel: Kernel, rows: NDArray[np.intp]
-) -> Check:
+def _lagrange(key: str, method: str, statistic: float, df: int, source: str, kernel: Kernel, rows: Rows) -> Check:
     p = float(special.chdtrc(df, statistic)) if df > 0 else NAN
     return Check(key, method, "chi square", statistic, (float(df),), p, NAN, source, _sampled(kernel, rows))
 
@@ -94,20 +93,19 @@ def _lagrange(
 # --- independence ----------------------------------------------------------------------------------
 
 
-def _serial(kernel: Kernel, residual: Array, weight: Array, order: NDArray[np.intp], ordered: bool) -> Check:
+def _serial(kernel: Kernel, residual: Array, order: Rows, ordered: bool) -> Check:
     """Durbin & Watson's d, with the first-order correlation of the residuals as its estimate."""
     e = residual[order]
     d = durbinwatson.statistic(e)
-    q = basis_rows(kernel, order) * weight[order][:, None]
     correlation = float(e[1:] @ e[:-1]) / float(e @ e)
     note = "" if ordered else "in the order of the rows on the sheet; give an order column if there is another"
     if kernel.n > durbinwatson.MOST_EXACT:
         note = f"{note}{'; ' if note else ''}p approximate (beta distribution)"
-    p = durbinwatson.p_value(d, q)
+    p = durbinwatson.p_value(d, kernel, order)
     return Check("serial", "Durbin-Watson", "d", d, (), p, correlation, "Durbin & Watson 1950, 1951", note)
 
 
-def _serial_order(kernel: Kernel, residual: Array, weight: Array, order: NDArray[np.intp], asked: int | None) -> Check:
+def _serial_order(kernel: Kernel, residual: Array, order: Rows, asked: int | None) -> Check:
     """Breusch (1978) and Godfrey's (1978) test: n R2 of the residuals on the design and their own lags."""
     lags = asked if asked else max(default_lags(kernel.n), 1)
     source = "Breusch 1978, Godfrey 1978"
@@ -115,23 +113,39 @@ def _serial_order(kernel: Kernel, residual: Array, weight: Array, order: NDArray
         note = "too few rows for so many lags"
         return Check("serial_order", "Breusch-Godfrey", "chi square", NAN, (float(lags),), NAN, NAN, source, note)
     e = residual[order]
-    q = basis_rows(kernel, order) * weight[order][:, None]
-    lagged = np.column_stack([np.concatenate([np.zeros(k), e[:-k]]) for k in range(1, lags + 1)])
-    statistic = kernel.n * _gain(q, lagged, e)[0] / float(e @ e)
+    statistic = kernel.n * _by_own_lags(kernel, e, order, lags) / float(e @ e)
     p = float(special.chdtrc(lags, statistic))
     return Check("serial_order", "Breusch-Godfrey", "chi square", statistic, (float(lags),), p, NAN, source)
+
+
+def _by_own_lags(kernel: Kernel, e: Array, order: Rows, lags: int) -> float:
+    """Sum of squares of the residuals (n,) that the design and their lags explain; zeros before the first row."""
+    padded = np.concatenate([np.zeros(lags), e])
+
+    def work(rows: slice) -> Array:
+        windows = np.lib.stride_tricks.sliding_window_view(padded[rows.start : rows.stop + lags], lags + 1)
+        q = orthonormal(kernel, order[rows])
+        return np.asarray(np.hstack([q, windows]).T @ windows)
+
+    products = np.sum(over_blocks(kernel.n, work), axis=0)
+    across, own = products[: kernel.p], products[kernel.p :]
+    own = own - across.T @ across  # beyond the design; the last is the residual itself
+    values, vectors = np.linalg.eigh(own[:-1, :-1])
+    known = values > 1e-12 * values[-1]
+    beyond = float(np.sum((vectors[:, known].T @ own[:-1, -1]) ** 2 / values[known]))
+    return beyond + float(np.sum(across[:, -1] ** 2))
 
 
 # --- form ------------------------------------------------------------------------------------------
 
 
-def _form(kernel: Kernel, residual: Array, weight: Array, rows: NDArray[np.intp]) -> Check:
+def _form(kernel: Kernel, residual: Array, weight: Array, rows: Rows) -> Check:
     """Ramsey's (1969) RESET: F of the second and third power of the fitted values, added to the design."""
     n, source = len(rows), "Ramsey 1969"
     spread = float(np.ptp(kernel.fitted[rows]))
     if spread == 0:
         return Check("form", "RESET", "F", NAN, (), NAN, NAN, source, "the fitted values do not vary")
-    q = basis_rows(kernel, rows) * weight[rows][:, None]
+    q = orthonormal(kernel, rows)
     if n < kernel.n:
         q = spanned(q)
     # Powers about the middle span the same space beside the intercept and the fitted values.

@@ -5,15 +5,13 @@ from __future__ import annotations
 from collections.abc import Mapping
 
 import numpy as np
-from numpy.typing import NDArray
 
-from bridge.regression.results import ModelResult, Nested
+from bridge.regression.auxiliary import Rows, even_sample, spanned
+from bridge.regression.results import Design, ModelResult, Nested
 from bridge.regression.spec import FitBy
 from bridge.regression.tails import f_upper
 
 SPANNED = 1e-9  # a column's distance from another model's columns, over its length, below which it is among them
-
-Array = NDArray[np.float64]
 
 
 def compare(results: Mapping[str, ModelResult]) -> tuple[Nested, ...]:
@@ -42,16 +40,33 @@ def _comparable(a: ModelResult, b: ModelResult) -> bool:
 
 
 def _spans(a: ModelResult, b: ModelResult) -> bool:
-    known = {column.label for column in b.design.columns}
-    others = [j for j, column in enumerate(a.design.columns) if column.label not in known]
+    """Whether b's columns span a's: judged on a few rows first, which shows most pairs apart."""
+    few = even_sample(a.fit.n, 20 * len(b.design.columns))
+    return _spans_on(a, b, few) and (len(few) == a.fit.n or _spans_on(a, b, np.arange(a.fit.n)))
+
+
+def _spans_on(a: ModelResult, b: ModelResult, rows: Rows) -> bool:
+    theirs = b.design.matrix[rows]
+    others = _not_among(a.design, b.design, rows)
     if not others:
         return True
-    weight = np.ones(b.fit.n) if b.fit.weights is None else np.sqrt(b.fit.weights)
-    q, _ = np.linalg.qr(b.design.matrix * weight[:, None] / np.abs(b.design.matrix).max(axis=0))
-    x = a.design.matrix[:, others] * weight[:, None]
+    weight = np.ones(len(rows)) if b.fit.weights is None else np.sqrt(b.fit.weights[rows])
+    q = spanned(theirs * weight[:, None], 0.0)
+    x = a.design.matrix[rows][:, others] * weight[:, None]
     rest = x - q @ (q.T @ x)
     rest -= q @ (q.T @ rest)
     return bool((np.linalg.norm(rest, axis=0) <= SPANNED * np.linalg.norm(x, axis=0)).all())
+
+
+def _not_among(a: Design, b: Design, rows: Rows) -> list[int]:
+    """The columns of a that do not stand in b as they are."""
+    known = {column.label: j for j, column in enumerate(b.columns)}
+
+    def same(j: int) -> bool:
+        at = known.get(a.columns[j].label)
+        return at is not None and bool(np.array_equal(a.matrix[rows, j], b.matrix[rows, at]))
+
+    return [j for j in range(len(a.columns)) if not same(j)]
 
 
 def _partial_f(small: str, a: ModelResult, large: str, b: ModelResult) -> Nested:

@@ -1,75 +1,69 @@
-"""The best subset of the candidate terms, exactly: every subset is judged or shown to be beaten.
+"""The best subset of the candidate terms, exactly: every subset is judged or shown to be beaten (see branching.py).
 
-Subsets are met in a tree, a candidate taken in or left out at each branching, and the cross-products eliminated as in
-Furnival & Wilson (1974, "Regressions by leaps and bounds"): taking a term in sweeps its columns, leaving it out deletes
-them. The last levels of the tree are worked through whole, many subsets at a time; a branch above them is passed
-over when even all its terms together could not beat what has been found.
+By cross-validation: the three subsets of each number of coefficients with the least residual sums are compared.
 
-A crossed term goes only with both its main terms. p values and intervals of a model chosen this way are too good; the
-cross-validated miss of the whole search is not.
+A crossed term goes only with both its main terms. Without an intercept the first category keeps a column for every
+level whichever terms go with it; where that category itself may go, the next one is judged by treatment coding.
+
+p values and intervals of a model chosen this way are too good; the cross-validated miss of the whole search is not.
 """
 
 from __future__ import annotations
 
-import heapq
-from collections.abc import Callable, Sequence
-from dataclasses import dataclass, field, replace
+import math
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
-from bridge.regression import crossvalidation, design, leastsquares
+from bridge.regression import branching, crossvalidation, design, leastsquares, subsets
+from bridge.regression.branching import Measure
 from bridge.regression.errors import RegressionError, TooFewRows, TooManyColumns
 from bridge.regression.results import SearchResult, Subset
 from bridge.regression.spec import ModelSpec, Observations, Search
 
 MOST_CANDIDATES = 30
-WHOLE_LEVELS = 12  # candidates decided many at a time: 4,096 subsets a batch
 SHOWN = 10
-TRIED = 3  # best subsets of each number of terms that are cross-validated
-DEPENDENT = 1e-11  # a column with less than this share of its sum of squares left adds nothing
+CONSTANT = 1e-12  # a column that varies by less than this share of its size does not vary
+TRIED = 3  # best subsets of each number of coefficients that are cross-validated
 
 Array = NDArray[np.float64]
-Masks = NDArray[np.int64]
 
 
 @dataclass(frozen=True, slots=True)
 class _Problem:
-    """Cross-products of the columns, forced ones first, then unit by unit, y last; scaled, about means (intercept).
+    """The tree's problem, `units` the candidates' names in its order.
 
-    `units`: the candidates' names in the order of the tree, `sizes` their columns; `needs[i]` the mask of candidates
-    that unit i may not go without. `base` counts coefficients besides the candidates'.
+    `full_rss`, `full_size`: with all candidates. `tss`: of the response; `log_weights`: the sum of their logarithms.
     """
 
-    products: Array
+    tree: branching.Problem
     units: tuple[str, ...]
-    sizes: tuple[int, ...]
-    needs: tuple[int, ...]
-    forced: int
-    base: int
-    n: int
     full_rss: float
     full_size: int
+    tss: float
+    log_weights: float
 
 
 def run(spec: ModelSpec, observations: Observations) -> SearchResult:
-    """The chosen terms by `spec.search`, with the runners-up.
+    """The chosen terms by `spec.search`, with the runners-up. Figures as elsewhere: adjusted R2 is better when larger.
 
-    Raises TooManyColumns above 30 candidates, and RegressionError where the model with all of them cannot be laid out.
+    Raises TooManyColumns above 30 candidates, TooFewRows where there are not more rows than the forced terms (for Cp:
+    all terms) have coefficients, and RegressionError where the model with all candidates cannot be laid out.
     """
     problem = _problem(spec, observations)
-    kept = _Best(SHOWN if spec.search is not Search.CROSS_VALIDATION else 0)
-    figure = _figure(spec.search, problem)
-    _branch(problem, kept, figure)
-    best = kept.ranked()
     if spec.search is Search.CROSS_VALIDATION:
-        best = _cross_validated(problem, kept, spec, observations)
-    if not best:  # no subset leaves a row to judge it by
-        raise TooFewRows(observations.n, problem.full_size)
+        best = _cross_validated(problem, branching.best(problem.tree, None, TRIED), spec, observations)
+    else:
+        measure = _measure(spec, problem)
+        best = [(measure.shown(value), mask) for value, mask in branching.best(problem.tree, measure, SHOWN)]
+    if not best:
+        raise TooFewRows(observations.n, problem.tree.base)
     ranked = tuple(Subset(_names(problem, mask), value) for value, mask in best[:SHOWN])
     chosen = ranked[0].terms
     dropped = tuple(name for name in problem.units if name not in chosen)
-    return SearchResult(spec.search.value, chosen, dropped, ranked, kept.judged)
+    return SearchResult(spec.search.value, chosen, dropped, ranked, branching.count(problem.tree))
 
 
 def with_terms(spec: ModelSpec, dropped: Sequence[str]) -> ModelSpec:
@@ -88,39 +82,51 @@ def with_terms(spec: ModelSpec, dropped: Sequence[str]) -> ModelSpec:
 
 
 def _problem(spec: ModelSpec, observations: Observations) -> _Problem:
+    if observations.n < 2:
+        raise TooFewRows(observations.n, 1 + int(spec.intercept))
     layout = design.layout(spec, observations)
-    candidates = {design.term_name(term): term.column for term in spec.terms if term.candidate}
-    of_column = {column: name for name, column in candidates.items()}
-    mains = {
-        design.crossed_name(spec, one): [of_column[c] for c in (one.first, one.second) if c in of_column]
-        for one in spec.crossed
-    }
-    units = [*candidates, *(name for name, needed in mains.items() if needed)]
-    if len(units) > MOST_CANDIDATES:
-        raise TooManyColumns(f"{len(units)} candidates to search among; at most {MOST_CANDIDATES}")
+    mains = _candidates(spec)
     x, y = _columns(spec, observations, layout)
-    places: dict[str, list[int]] = {}
+    places: dict[str, list[int]] = {name: [] for name in mains}
     for j, column in enumerate(layout.columns):
         if column.factors:
             places.setdefault(column.term, []).append(j)
-    forced = [j for term, at in places.items() if term not in units for j in at]
-    order = _strongest_first(x, y, places, units)
-    sequence = forced + [j for name in order for j in places.get(name, [])]
-    ordered = np.column_stack([x[:, sequence], y])
-    products = ordered.T @ ordered
-    lengths = np.sqrt(np.where(np.diag(products) > 0, np.diag(products), 1.0))
-    products /= np.outer(lengths, lengths)
+    forced = [j for term, at in places.items() if term not in mains for j in at]
+    order = _strongest_first(x, y, places, list(mains))
     number = {name: i for i, name in enumerate(order)}
-    needs = tuple(sum(1 << number[main] for main in mains.get(name, [])) for name in order)
-    sizes = tuple(len(places.get(name, [])) for name in order)
-    rss, size = _full(products)
-    base = int(spec.intercept) + _full(products[np.ix_([*range(len(forced)), -1], [*range(len(forced)), -1])])[1]
-    scale = float(lengths[-1]) ** 2
-    products[-1, :] *= lengths[-1]
-    products[:, -1] *= lengths[-1]
+    products, length = _products(x[:, [*forced, *(j for name in order for j in places[name])]], y)
+    rss, size = branching.eliminated(products)
+    alone = [*range(len(forced)), -1]
+    base = int(spec.intercept) + branching.eliminated(products[np.ix_(alone, alone)])[1]
+    weights = design.weights(spec, observations)
     return _Problem(
-        products, tuple(order), sizes, needs, len(forced), base, observations.n, rss * scale, int(spec.intercept) + size
+        tree=branching.Problem(
+            products=products,
+            sizes=tuple(len(places[name]) for name in order),
+            needs=tuple(sum(1 << number[main] for main in mains[name]) for name in order),
+            forced=len(forced),
+            base=base,
+            n=observations.n,
+        ),
+        units=tuple(order),
+        full_rss=rss,
+        full_size=int(spec.intercept) + size,
+        tss=length**2,
+        log_weights=0.0 if weights is None else float(np.sum(np.log(weights))),
     )
+
+
+def _candidates(spec: ModelSpec) -> dict[str, list[str]]:
+    """The terms that may go, products of such terms among them, each with the candidates that it may not go without."""
+    names = {term.column: design.term_name(term) for term in spec.terms if term.candidate}
+    found: dict[str, list[str]] = {name: [] for name in names.values()}
+    for one in spec.crossed:
+        needed = [names[column] for column in (one.first, one.second) if column in names]
+        if needed:
+            found[design.crossed_name(spec, one)] = needed
+    if len(found) > MOST_CANDIDATES:
+        raise TooManyColumns(f"{len(found)} candidates to search among; at most {MOST_CANDIDATES}")
+    return found
 
 
 def _columns(spec: ModelSpec, observations: Observations, layout: design.Layout) -> tuple[Array, Array]:
@@ -129,168 +135,83 @@ def _columns(spec: ModelSpec, observations: Observations, layout: design.Layout)
     weights = design.weights(spec, observations)
     share = np.ones(len(y)) if weights is None else weights
     if spec.intercept:
+        size = np.abs(x).max(axis=0)
         x, y = x - share @ x / share.sum(), y - share @ y / share.sum()
+        x[:, np.abs(x).max(axis=0) <= CONSTANT * size] = 0.0  # what is left of a constant is rounding
     root = np.sqrt(share)
     return x * root[:, None], y * root
+
+
+def _products(x: Array, y: Array) -> tuple[Array, float]:
+    """Cross-products of the columns, scaled to length 1, and the response, which is not; the response's length."""
+    both = np.column_stack([x, y])
+    products = both.T @ both
+    lengths = np.sqrt(np.where(np.diag(products) > 0, np.diag(products), 1.0))
+    lengths[-1] = 1.0
+    return products / np.outer(lengths, lengths), math.sqrt(max(float(products[-1, -1]), 0.0))
 
 
 def _strongest_first(x: Array, y: Array, places: dict[str, list[int]], units: Sequence[str]) -> list[str]:
     """Units by their own correlation with y, the strong first: branches without them are soon beaten."""
 
     def strength(name: str) -> float:
-        at = places.get(name, [])
+        at = places[name]
         lengths = np.sum(x[:, at] ** 2, axis=0)
         return float(np.max((x[:, at].T @ y) ** 2 / np.where(lengths > 0, lengths, 1.0), initial=0.0))
 
     return sorted(units, key=lambda name: (-strength(name), name))
 
 
-def _full(products: Array) -> tuple[float, int]:
-    """The residual sum and the rank with every column in."""
-    a, rank = products.copy(), 0
-    for _ in range(len(a) - 1):
-        a, taken = _taken_in(a[None])
-        a, rank = a[0], rank + int(taken[0])
-    return float(max(a[0, 0], 0.0)), rank
+# --- by which figure -----------------------------------------------------------------------------------
 
 
-# --- the tree ----------------------------------------------------------------------------------------
-
-
-@dataclass
-class _Best:
-    """The best subsets so far: overall, and of each number of coefficients."""
-
-    shown: int
-    heap: list[tuple[float, int]] = field(default_factory=list)
-    by_size: dict[int, list[tuple[float, int]]] = field(default_factory=dict)
-    judged: int = 0
-
-    @property
-    def worst(self) -> float:
-        """The figure to beat."""
-        return -self.heap[0][0] if self.shown and len(self.heap) >= self.shown else np.inf
-
-    def offer(self, masks: Masks, figures: Array, sizes: Masks, rss: Array) -> None:
-        """Take what is better than the worst kept."""
-        self.judged += len(masks)
-        if not self.shown:
-            for size in np.unique(sizes).tolist():
-                at = np.flatnonzero(sizes == size)
-                best = at[np.argsort(rss[at], kind="stable")[:TRIED]]
-                pairs = self.by_size.get(size, []) + [(float(rss[i]), int(masks[i])) for i in best]
-                self.by_size[size] = sorted(pairs)[:TRIED]
-            return
-        order = np.argsort(figures, kind="stable")[: self.shown]
-        for i in order[figures[order] < self.worst]:
-            heapq.heappush(self.heap, (-float(figures[i]), -int(masks[i])))
-            if len(self.heap) > self.shown:
-                heapq.heappop(self.heap)
-
-    def ranked(self) -> list[tuple[float, int]]:
-        """Figure and mask, best first; of equals the smaller subset first."""
-        pairs = [(-value, -mask) for value, mask in self.heap]
-        return sorted(pairs, key=lambda pair: (pair[0], pair[1].bit_count(), pair[1]))
-
-
-Figure = Callable[[Array, Array], Array]  # residual sums and numbers of coefficients -> figures, smaller is better
-
-
-def _figure(by: Search, problem: _Problem) -> Figure:
-    n = problem.n
-    if by is Search.ADJUSTED_R2:
-        return lambda rss, p: rss / np.maximum(n - p, 1e-300)
-    if by is Search.CP:  # Mallows (1973)
-        error = problem.full_rss / max(n - problem.full_size, 1)
-        return lambda rss, p: rss / error - n + 2 * p if error > 0 else rss
-    return lambda rss, p: n * np.log(np.maximum(rss, 1e-300)) + p * np.log(n)  # Schwarz (1978)
-
-
-def _branch(problem: _Problem, kept: _Best, figure: Figure) -> None:
-    """Work through the tree, the most promising branch first."""
-    start = problem.products[None]
-    for _ in range(problem.forced):
-        start, _ = _taken_in(start)
-    count = len(problem.units)
-    above = max(count - WHOLE_LEVELS, 0)
-    stack = [(0, start, 0, problem.base)]
-    while stack:
-        level, a, mask, size = stack.pop()
-        if level == above:
-            _whole(problem, kept, figure, (level, a, mask, size))
-            continue
-        if _beaten(problem, kept, figure, a[0], size):
-            continue
-        width = problem.sizes[level]
-        out = a[:, width:, width:]
-        taken, more = _unit_in(a, width)
-        stack.append((level + 1, out, mask, size))
-        stack.append((level + 1, taken, mask | 1 << level, size + int(more[0])))
-
-
-def _beaten(problem: _Problem, kept: _Best, figure: Figure, a: Array, size: int) -> bool:
-    """Whether no subset below can be kept: with all terms left the residual sum, with none of them the coefficients."""
-    if not kept.shown or not np.isfinite(kept.worst):
-        return False
-    rss, _ = _full(a)
-    return bool(figure(np.array([rss]), np.array([float(size)]))[0] > kept.worst)
-
-
-def _whole(problem: _Problem, kept: _Best, figure: Figure, node: tuple[int, Array, int, int]) -> None:
-    """Every subset of the remaining units at once: each level doubles the batch."""
-    level, a, mask, size = node
-    masks, sizes = np.array([mask], dtype=np.int64), np.array([size], dtype=np.int64)
-    for unit in range(level, len(problem.units)):
-        width = problem.sizes[unit]
-        taken, more = _unit_in(a, width)
-        a = np.concatenate([a[:, width:, width:], taken])
-        sizes = np.concatenate([sizes, sizes + more])
-        masks = np.concatenate([masks, masks | 1 << unit])
-    allowed = np.ones(len(masks), dtype=np.bool_)
-    for unit, needed in enumerate(problem.needs):
-        if needed:
-            allowed &= ((masks >> unit & 1) == 0) | ((masks & needed) == needed)
-    allowed &= sizes < problem.n
-    rss = np.maximum(a[allowed, 0, 0], 0.0)
-    kept.offer(masks[allowed], figure(rss, sizes[allowed].astype(float)), sizes[allowed], rss)
-
-
-def _unit_in(a: Array, width: int) -> tuple[Array, Masks]:
-    """Sweep the first `width` columns of each matrix (batch, m, m); how many of them added anything."""
-    added = np.zeros(len(a), dtype=np.int64)
-    for _ in range(width):
-        a, taken = _taken_in(a)
-        added += taken
-    return a, added
-
-
-def _taken_in(a: Array) -> tuple[Array, NDArray[np.bool_]]:
-    """Eliminate the first column of each matrix; one that depends on those before it is only struck out."""
-    pivot = a[:, 0, 0]
-    independent = pivot > DEPENDENT
-    row = a[:, 0, 1:] * np.where(independent, 1 / np.where(independent, pivot, 1.0), 0.0)[:, None]
-    return a[:, 1:, 1:] - a[:, 1:, :1] * row[:, None, :], independent
+def _measure(spec: ModelSpec, problem: _Problem) -> Measure:
+    """The figure asked for, other than cross-validation."""
+    n, log_n = problem.tree.n, math.log(problem.tree.n)
+    if spec.search is Search.ADJUSTED_R2:  # by the residual mean square
+        total = max(problem.tss, 1e-300) / (n - int(spec.intercept))
+        return Measure(lambda rss, p: rss / (n - p), lambda value, p: value * (n - p), lambda value: 1 - value / total)
+    if spec.search is Search.CP:  # Mallows (1973)
+        if n <= problem.full_size:
+            raise TooFewRows(n, problem.full_size)
+        error = max(problem.full_rss / (n - problem.full_size), 1e-300)
+        return Measure(
+            lambda rss, p: rss / error - n + 2 * p, lambda value, p: (value + n - 2 * p) * error, lambda value: value
+        )
+    rest = n * (1 + math.log(2 * math.pi / n)) - problem.log_weights  # what fit.py's BIC has besides
+    return Measure(  # Schwarz (1978)
+        lambda rss, p: n * np.log(np.maximum(rss, 1e-300)) + p * log_n,
+        lambda value, p: np.exp((value - p * log_n) / n),
+        lambda value: value + rest,
+    )
 
 
 # --- by cross-validation -------------------------------------------------------------------------------
 
 
 def _cross_validated(
-    problem: _Problem, kept: _Best, spec: ModelSpec, observations: Observations
+    problem: _Problem, best: Sequence[tuple[float, int]], spec: ModelSpec, observations: Observations
 ) -> list[tuple[float, int]]:
     """The best few subsets of each size, judged by their cross-validated miss; best first."""
+    quick = subsets.Judge(spec, observations)
     found = []
-    for mask in [mask for pairs in kept.by_size.values() for _, mask in pairs]:
+    for _, mask in best:
         chosen = _names(problem, mask)
         reduced = with_terms(spec, [name for name in problem.units if name not in chosen])
-        try:
-            solved = leastsquares.solve(reduced, observations)
-            miss = crossvalidation.run(solved.kernel, reduced, observations).rmse
-        except RegressionError:
-            continue
+        miss = quick.miss(reduced)
+        if miss is None:
+            miss = _miss(reduced, observations)
         if np.isfinite(miss):
             found.append((miss, mask))
-    return sorted(found, key=lambda pair: (pair[0], pair[1].bit_count(), pair[1]))
+    return sorted(found, key=branching.rank_of)
+
+
+def _miss(spec: ModelSpec, observations: Observations) -> float:
+    try:
+        solved = leastsquares.solve(spec, observations)
+    except RegressionError:
+        return math.nan
+    return crossvalidation.run(solved.kernel, spec, observations).rmse
 
 
 def _names(problem: _Problem, mask: int) -> tuple[str, ...]:
