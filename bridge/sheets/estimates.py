@@ -38,7 +38,7 @@ def lay_out(book: Book) -> Sheet:
         row = FIRST_ROW + at
         _entries(paper, places, row, case)
         for columns in places.models:
-            now = case_formulas.evaluate(columns, case.entries, bool(case.name))
+            now = case_formulas.evaluate(columns, case.entries, case.name != "")
             evaluated[columns.model.name].append(now)
             _figures(paper, columns, row, case_formulas.answers(columns, places, row, now, case.entries))
             helpers = case_formulas.helpers(columns, places, where[columns.model.name], tab, row, now)
@@ -94,7 +94,7 @@ def read_cases(raw: RawSheet) -> tuple[NewCase, ...]:
         entries = {name: raw.values[place] for name, place in at.items()}
         formulas = {name: raw.formulas[place] for name, place in at.items() if place in raw.formulas}
         name = raw.values.get((row, head[1]), "")
-        cases.append(NewCase(case_formulas.as_level(name) if name != "" else "", entries, formulas))
+        cases.append(NewCase(name, entries, formulas))
     return tuple(cases)
 
 
@@ -163,7 +163,7 @@ def _title(model: ModelSheet, columns: ModelColumns) -> str:
 
 
 def _entries(paper: Paper, places: Plan, row: int, case: NewCase) -> None:
-    paper.cells[(row, 0)] = Cell(case.name or None, replace(style.INPUT, align="left"))
+    paper.cells[(row, 0)] = Cell(case.name if case.name != "" else None, replace(style.INPUT, align="left"))
     for each in places.inputs:
         value = case.entries.get(each.name)
         look = style.INPUT if each.category else style.INPUT_NUMBER
@@ -236,7 +236,7 @@ def _lists(paper: Paper, places: Plan) -> None:
 
 
 def _widths(book: Book, places: Plan) -> dict[int, float]:
-    names = [case.name for case in book.cases]
+    names = [case_formulas.as_level(case.name) for case in book.cases]
     widths = {0: min(max(16.0, measure.widest(names)), 40.0)}
     for each in places.inputs:
         texts = [each.name.split(" ")[0] if len(each.name) > 18 else each.name, *each.levels]

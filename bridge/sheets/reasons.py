@@ -22,6 +22,7 @@ from bridge.sheets.case_formulas import Evaluated
 from bridge.sheets.cases import FIRST_ROW, HEADER_ROW, ModelColumns, Plan
 from bridge.sheets.paper import Paper
 from bridge.workbook.contents import Choices, RawSheet
+from bridge.workbook.request import Scalar
 
 READINGS = 5
 _INPUT = replace(style.INPUT, align="left")
@@ -37,20 +38,25 @@ def widths(places: Plan) -> dict[int, float]:
 def read_choices(raw: RawSheet) -> Choices:
     """What the user chose and typed in the block, found by its labels."""
     title = next((at for at, value in sorted(raw.values.items()) if value == TITLE), None)
-    case: str | None = None
+    case: Scalar | None = None
     model = ""
     if title is not None:
-        found = raw.values.get((title[0] + 1, title[1] + 1))
-        case = case_formulas.as_level(found) if found is not None else None
+        case = raw.values.get((title[0] + 1, title[1] + 1))
         model = str(raw.values.get((title[0] + 2, title[1] + 1), ""))
-    readings: dict[str, tuple[float, ...]] = {}
+    readings: dict[str, tuple[tuple[float, float | None], ...]] = {}
     for (row, column), value in raw.values.items():
         if isinstance(value, str) and value.startswith(BACK + ": "):
-            typed = [raw.values.get((row + 2 + at, column)) for at in range(READINGS)]
-            kept = tuple(float(y) for y in typed if isinstance(y, int | float) and not isinstance(y, bool))
+            rows = range(row + 2, row + 2 + READINGS)
+            typed = [(_number(raw, (at, column)), _number(raw, (at, column + 4))) for at in rows]
+            kept = tuple((y, weight) for y, weight in typed if y is not None)
             if kept:
                 readings[value.removeprefix(BACK + ": ")] = kept
     return Choices(case, model, readings)
+
+
+def _number(raw: RawSheet, at: tuple[int, int]) -> float | None:
+    value = raw.values.get(at)
+    return float(value) if isinstance(value, int | float) and not isinstance(value, bool) else None
 
 
 def put_down(book: Book, paper: Paper, places: Plan, evaluated: Mapping[str, Sequence[Evaluated]]) -> None:
@@ -78,26 +84,26 @@ def _why(book: Book, paper: Paper, places: Plan, evaluated: Mapping[str, Sequenc
     top, left = HEADER_ROW - 1, places.why
     model, name = _default(book, places, evaluated)
     paper.put(left, TITLE, style.HEADING, row=top)
-    for at, (label, value) in enumerate((("case", name or None), ("model", model.model.name))):
+    for at, (label, value) in enumerate((("case", name if name != "" else None), ("model", model.model.name))):
         paper.put(left, label, style.ROW, row=top + 1 + at)
         paper.put(left + 1, value, _INPUT, row=top + 1 + at)
     cases = f"{address(FIRST_ROW, 0, absolute=True)}:{address(places.last_row, 0, absolute=True)}"
     paper.drop_downs.append(DropDown((top + 1, left + 1), (top + 1, left + 1), choices=cases))
     names = tuple(each.model.name for each in places.models)
     paper.drop_downs.append(DropDown((top + 2, left + 1), (top + 2, left + 1), choices=names))
-    line = next((i for i, case in enumerate(book.cases) if case.name == name), None) if name else None
+    line = next((i for i, case in enumerate(book.cases) if case.name == name), None) if name != "" else None
     now = evaluated[model.model.name][line] if line is not None else None
     return _steps(paper, places, _Chosen(model, now if now is not None and now.state == 2 else None), line)
 
 
-def _default(book: Book, places: Plan, evaluated: Mapping[str, Sequence[Evaluated]]) -> tuple[ModelColumns, str]:
+def _default(book: Book, places: Plan, evaluated: Mapping[str, Sequence[Evaluated]]) -> tuple[ModelColumns, Scalar]:
     """The user's choice where it still holds, else the first model and the first case that has an estimate."""
     chosen = next((m for m in places.models if m.model.name == book.choices.model), places.models[0])
     names = [case.name for case in book.cases]
-    if book.choices.case in names:
-        return chosen, str(book.choices.case)
+    if book.choices.case is not None and book.choices.case in names:
+        return chosen, book.choices.case
     done = evaluated[chosen.model.name]
-    return chosen, next((name for name, now in zip(names, done, strict=False) if name and now.state == 2), "")
+    return chosen, next((name for name, now in zip(names, done, strict=False) if name != "" and now.state == 2), "")
 
 
 def _steps(paper: Paper, places: Plan, chosen: _Chosen, at: int | None) -> int:
@@ -248,34 +254,43 @@ def _backwards(book: Book, paper: Paper, places: Plan, columns: ModelColumns, ro
     paper.put(left, f"{BACK}: {columns.model.name}", style.HEADING, row=row)
     right = replace(style.HEADER, align="right")
     level = f"{100 * spec.level:.10g}%"
-    heads = (f"{y_name} (one reading)", x_name, f"{level} low", f"{level} high")
+    heads = [f"{y_name} (one reading)", x_name, f"{level} low", f"{level} high"]
+    if spec.weight is not None:
+        heads.append(spec.weight)
     for j, text in enumerate(heads):
         paper.put(left + j, text, right if j else style.HEADER, row=row + 1)
     typed = book.choices.readings.get(columns.model.name, ())
     code = figures.number_format(float(abs(result.ranges[0].high)) or 1.0, 6) if result.ranges else "General"
     for at in range(READINGS):
         line = row + 2 + at
-        y = typed[at] if at < len(typed) else None
-        paper.put(left, y, replace(style.INPUT_NUMBER, align="right"), row=line)
-        values = _values(columns, y)
-        for j, (text, value) in enumerate(zip(_inverse_formulas(columns, address(line, left)), values, strict=True)):
+        y, weight = typed[at] if at < len(typed) else (None, None)
+        paper.put(left, y, style.INPUT_NUMBER, row=line)
+        if spec.weight is not None:
+            paper.put(left + 4, weight, style.INPUT_NUMBER, row=line)
+        values = _values(columns, y, weight)
+        texts = _inverse_formulas(columns, address(line, left), address(line, left + 4))
+        for j, (text, value) in enumerate(zip(texts, values, strict=True)):
             paper.put(left + 1 + j, Formula(text, value), replace(style.NUMBER, number_format=code), row=line)
     note = "Interval by Fieller (1954): for one further reading, and the line's own uncertainty."
     if spec.weight is not None:
-        note += f" The reading is taken to have {words.name_in(columns.model.table, spec.weight)} 1."
+        note += f" It needs the reading's {words.name_in(columns.model.table, spec.weight)}."
     paper.put(left, note, replace(style.SUBTITLE, size=8.0), row=row + 2 + READINGS)
     return row + 2 + READINGS
 
 
-def _values(columns: ModelColumns, y: float | None) -> tuple[float | str, float | str, float | str]:
+def _values(
+    columns: ModelColumns, y: float | None, weight: float | None
+) -> tuple[float | str, float | str, float | str]:
     if y is None:
         return "", "", ""
-    found = inverse.estimate(columns.result, y)
+    if columns.result.spec.weight is not None and (weight is None or weight <= 0):
+        return inverse.estimate(columns.result, y).x, "", ""
+    found = inverse.estimate(columns.result, y, weight=1.0 if weight is None else weight)
     low = found.low if found.low is not None else "unbounded"
     return found.x, low, found.high if found.high is not None else "unbounded"
 
 
-def _inverse_formulas(columns: ModelColumns, y: str) -> tuple[str, str, str]:
+def _inverse_formulas(columns: ModelColumns, y: str, weight: str) -> tuple[str, str, str]:
     result = columns.result
     fit, one = result.fit, result.spec.intercept
     b, v = float(fit.coefficients[-1]), fit.covariance
@@ -285,15 +300,17 @@ def _inverse_formulas(columns: ModelColumns, y: str) -> tuple[str, str, str]:
     t2 = t_quantile(result.spec.level, fit.df_interval) ** 2
     n = live.number
     x = f"(({y}-{n(a)})/{n(b)})"
-    own = f"({n(fit.residual_sd**2 + vaa)}+2*{x}*{n(vab)}+{x}*{x}*{n(vbb)})"
+    weighted = result.spec.weight is not None
+    reading = f"{n(fit.residual_sd**2)}/{weight}" if weighted else n(fit.residual_sd**2)
+    own = f"({reading}+{n(vaa)}+2*{x}*{n(vab)}+{x}*{x}*{n(vbb)})"
     square = b * b - t2 * vbb
     half = f"({n(t2)}*({n(vab)}+{x}*{n(vbb)}))"
     root = f"({half}*{half}+{n(square)}*{n(t2)}*{own})"
 
-    def guarded(text: str) -> str:
-        return f'IF(ISNUMBER({y}),{text},"")'
-
-    if square <= 0:
-        return guarded(x), guarded('"unbounded"'), guarded('"unbounded"')
-    ends = [f"{x}+({half}{sign}SQRT({root}))/{n(square)}" for sign in "-+"]
-    return guarded(x), guarded(ends[0]), guarded(ends[1])
+    ends = ['"unbounded"'] * 2
+    if square > 0:
+        ends = [f"{x}+({half}{sign}SQRT({root}))/{n(square)}" for sign in "-+"]
+    if weighted:
+        ends = [f'IF(N({weight})>0,{end},"")' for end in ends]
+    low, high = (f'IF(ISNUMBER({y}),{end},"")' for end in ends)
+    return f'IF(ISNUMBER({y}),{x},"")', low, high
