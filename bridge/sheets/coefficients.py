@@ -110,7 +110,7 @@ def _block(book: Book, paper: Paper, model: ModelSheet, result: ModelResult, pla
     level = f"{100 * result.spec.level:.10g}%"
     heads = ("term", "coefficient", "standard error", "t", "p", f"{level} low", f"{level} high", "standardised", "VIF")
     right = replace(style.HEADER, align="right")
-    looks = (style.HEADER, *(right for _ in heads[1:]), style.HEADER)
+    looks = (style.HEADER, *(right for _ in heads[1:]), replace(style.HEADER, indent=1))
     paper.line((*heads, "effect in words"), looks)
     for at in range(len(result.design.columns)):
         _row(paper, model, result, at)

@@ -20,6 +20,7 @@ from bridge.workbook.request import Scalar
 
 Span = tuple[tuple[int, int], tuple[int, int]]
 _CASE = "case"
+_INPUTS_A_PAGE = 10  # with more inputs the case alone is repeated on each printed page
 _HELP = replace(style.NUMBER, color=style.QUIET, size=8.0)
 
 
@@ -48,14 +49,15 @@ def lay_out(book: Book) -> Sheet:
     _lists(paper, places)
     reasons.put_down(book, paper, places, evaluated)
     paper.row = places.last_row + 1
+    few = len(places.inputs) <= _INPUTS_A_PAGE
     hidden = range(places.models[0].x, places.list_column + len(places.levels)) if places.models else range(0)
     return paper.sheet(
         max(places.why - 2, 4),
         title=book.title("fit estimates"),
         freeze=(FIRST_ROW, 1),
         print_titles=(HEADER_ROW - 1, HEADER_ROW),
-        title_columns=(0, len(places.inputs)),
-        fit_width=max(len(places.models), 1),
+        title_columns=(0, len(places.inputs) if few else 0),
+        fit_width=max(len(places.models), 1) + (0 if few else -(-len(places.inputs) // _INPUTS_A_PAGE)),
         tab_color=style.TAB_FILL_IN,
         hidden_columns=frozenset(hidden),
     )

@@ -47,6 +47,7 @@ _SHOWN = HEADERS.index("typical miss")  # the last column that the page's top ru
 _FORMATS = {"rows used": figures.WHOLE, "rows left out": figures.WHOLE, "R2": "0.0000", "adjusted R2": "0.0000"}
 _MOMENT = "yyyy\\-mm\\-dd hh:mm"
 _NUMBERS = HEADERS[3:9]
+_AFTER_NUMBERS = HEADERS[9]  # kept apart from the numbers that end at its edge
 _WRAPPED = ("data sheet", *HEADERS[9:])
 _COEFFICIENT = re.compile(r"(.+?) (-?(?:\d[\d.]*(?:e[-+]?\d+)?|inf|nan))(?:; |$)")
 _DIGITS = 4  # of its standard error to which a coefficient is kept
@@ -216,7 +217,9 @@ def _heads(paper: Paper, lines: Sequence[Mapping[str, Scalar]]) -> tuple[str, ..
     for column in range(_LAST + 1, len(header)):
         paper.widths[column] = 20.0
     head = replace(style.HEADER, wrap=True)
-    paper.line(header, [replace(head, align="right") if name in _NUMBERS else head for name in header])
+    looks = {name: replace(head, align="right") for name in _NUMBERS}
+    looks[_AFTER_NUMBERS] = replace(head, indent=1)
+    paper.line(header, [looks.get(name, head) for name in header])
     return header
 
 
@@ -231,7 +234,7 @@ def _line(paper: Paper, header: Sequence[str], fields: Mapping[str, Scalar]) -> 
 
 
 def _look(name: str, value: Scalar | None) -> Format:
-    look = replace(style.ROW, valign="top", wrap=name in _WRAPPED)
+    look = replace(style.ROW, valign="top", wrap=name in _WRAPPED, indent=int(name == _AFTER_NUMBERS))
     if not isinstance(value, float | int) or isinstance(value, bool):
         return look
     if name == "fitted at":

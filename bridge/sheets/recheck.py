@@ -170,7 +170,7 @@ def _answers(paper: Paper, model: ModelSheet, result: ModelResult, plan: _Plan) 
 
 
 def _line(paper: Paper, label: str, value: Formula, look: Format, verdict: str) -> None:
-    paper.spread(label, 0, 2, style.ROW)
+    paper.spread(label, 0, 2, replace(style.ROW, wrap=True))
     paper.put(3, None, style.ROW)
     paper.put(4, None, style.ROW)
     paper.put(5, value, look)
