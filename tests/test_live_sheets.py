@@ -293,11 +293,18 @@ def seal():
     said = {sheets.getByName(name).getCellByPosition(0, 2).String for name in sheets.ElementNames if name[:4] == "fit "
             and name != "fit request"}
     return said.pop() if len(said) == 1 else repr(said)
+def row_rechecked(number):
+    sheet = sheets.getByName("fit coefficients")
+    row = next(r for r in range(400) if sheet.getCellByPosition(0, r).String.startswith("fitted value of the data row"))
+    sheet.getCellByPosition(4, row).Value = number
+    document.calculateAll()
+    return [sheet.getCellByPosition(5, row).Value, sheet.getCellByPosition(6, row).String]
 def rechecked():
     sheet = sheets.getByName("fit coefficients")
     return [sheet.getCellByPosition(6, row).String for row in range(400)
             if sheet.getCellByPosition(6, row).String in ("agrees", "DOES NOT AGREE")]
 answers = {"as saved": seal(), "recheck as saved": sorted(set(rechecked()))}
+answers["one row"] = [row_rechecked(row) for row in (2, 30, 9999)]
 def flipped(name, change, undo):
     change()
     answers[name] = seal()
@@ -356,10 +363,15 @@ print(json.dumps(answers))
 
 @needs_office
 def test_the_seal_flips_for_every_change_and_for_nothing_else(book: tuple[Path, Report], office: Office) -> None:
-    path, _ = book
+    path, report = book
     text = _SEAL % {"y": float(live_book.columns()["y"][19])}  # type: ignore[arg-type]
     answers = json.loads(office.script(text, str(path), timeout=300))
     assert answers.pop("recheck as saved") == ["agrees"]
+    result = report.models[0].result
+    assert result is not None
+    for at, (value, verdict) in zip((0, 28), answers.pop("one row"), strict=False):
+        assert value == pytest.approx(result.fit.fitted[at], rel=1e-12)
+        assert verdict == "agrees"
     assert "DOES NOT AGREE" in answers.pop("recheck of other data")
     same_data, other_data = (
         "data unchanged since this fit",

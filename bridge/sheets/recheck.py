@@ -8,15 +8,17 @@ rows left out never enter; each run has a line of working cells to the right of 
 from __future__ import annotations
 
 import math
+from collections.abc import Mapping
 from dataclasses import dataclass, replace
 
 import numpy as np
 
-from bridge.page.cells import Cell, Format, Formula, address
+from bridge.page.cells import Cell, Format, Formula, address, reference
 from bridge.page.sheet import Highlight
 from bridge.regression.results import ModelResult
 from bridge.regression.spec import FitBy, Shape
 from bridge.sheets import figures, live, style, words
+from bridge.sheets import rows as rows_sheet
 from bridge.sheets.book import Book, ModelSheet
 from bridge.sheets.paper import Paper
 
@@ -39,7 +41,7 @@ class _Plan:
 def rows(model: ModelSheet, result: ModelResult) -> int:
     """How many sheet rows the block takes."""
     plan = _plan(model, result)
-    return 2 if isinstance(plan, str) else max(4, len(plan.runs) + 3)
+    return 2 if isinstance(plan, str) else max(5, len(plan.runs) + 3)
 
 
 def put_down(book: Book, paper: Paper, model: ModelSheet, result: ModelResult, coefficients: Span) -> None:
@@ -53,6 +55,7 @@ def put_down(book: Book, paper: Paper, model: ModelSheet, result: ModelResult, c
         return
     _working(paper, model, result, coefficients, plan)
     _answers(paper, model, result, plan)
+    _chosen_row(book, paper, model, result, coefficients)
     paper.row = start + rows(model, result)
 
 
@@ -120,12 +123,17 @@ def _sums(
 
 def _residual(model: ModelSheet, result: ModelResult, coefficients: Span, run: tuple[int, int]) -> str:
     ranges = _ranges(model, result, run)
+    response = live.shaped(result.spec.response_shape, ranges[result.spec.response])
+    return f"{response}-({_predictor(result, ranges, coefficients)})"
+
+
+def _predictor(result: ModelResult, cells: Mapping[str, str], coefficients: Span) -> str:
+    """The fitted value, term by term; works on whole ranges too."""
     (row, column), _ = coefficients
-    terms = [
-        f"{address(row + j, column, absolute=True)}*{live.product(each, ranges)}"
+    return "+".join(
+        f"{address(row + j, column, absolute=True)}*{live.product(each, cells)}"
         for j, each in enumerate(result.design.columns)
-    ]
-    return f"{live.shaped(result.spec.response_shape, ranges[result.spec.response])}-({'+'.join(terms)})"
+    )
 
 
 def _ranges(model: ModelSheet, result: ModelResult, run: tuple[int, int]) -> dict[str, str]:
@@ -167,6 +175,44 @@ def _answers(paper: Paper, model: ModelSheet, result: ModelResult, plan: _Plan) 
         if max(len(text), len(value.text)) < live.MOST:
             code = replace(look, number_format="General")
             _line(paper, "largest sum of residual times column (zero but for rounding)", value, code, _guarded(text))
+
+
+def _chosen_row(book: Book, paper: Paper, model: ModelSheet, result: ModelResult, coefficients: Span) -> None:
+    """The fitted value of a row whose number the reader types, against what `fit rows` holds for it."""
+    section = next((each for each in rows_sheet.sections(book) if model.name in each.starts), None)
+    if section is None or model.taken is None:
+        return
+    table = section.table
+    first, last = int(table.rows[0]), int(table.rows[-1])
+    typed = address(paper.row, 4, absolute=True)
+    ranges = _ranges(model, result, (first, last))
+    cells = {name: f"INDEX({cells},{typed}-{first - 1})" for name, cells in ranges.items()}
+    fitted = _predictor(result, cells, coefficients)
+    if len(fitted) * 2 + 60 > live.MOST:
+        return
+    sheet = book.title("fit rows")
+    key = "on_scale" if "on_scale" in section.keys[model.name] else "fitted"
+    column = section.column(model.name, key)
+    numbers = reference(sheet, (section.first_row, 0), (section.last_row, 0))
+    stored = reference(sheet, (section.first_row, column), (section.last_row, column))
+    found = f"INDEX({stored},MATCH({typed},{numbers},0))"
+    value = address(paper.row, 5, absolute=True)
+    close = f'IF(ABS({value}-{found})<=1E-9*ABS({found})+1E-12,"{AGREES}","{DISAGREES}")'
+    judged = f'IF(ISNUMBER({value}),{close},"{DISAGREES}")'
+    verdict = f'IF(ISERROR({found}),"not listed",IF(ISNUMBER({found}),{judged},"left out"))'
+    code = figures.column_format(result.fit.fitted, result.fit.residual_sd, 5)
+    now = Formula(f'IF(ISERROR({fitted}),"no value",{fitted})', float(result.fit.fitted[0]))
+    listed = int(model.taken.used[0]) in section.lines
+    _line(
+        paper,
+        "fitted value of the data row typed here (its row number)",
+        now,
+        replace(style.NUMBER, number_format=code),
+        verdict,
+    )
+    paper.put(4, int(table.rows[model.taken.used[0]]), style.INPUT_NUMBER, row=paper.row - 1)
+    if not listed:
+        paper.put(6, Formula(verdict, "not listed"), replace(style.ROW_STRONG, align="right"), row=paper.row - 1)
 
 
 def _line(paper: Paper, label: str, value: Formula, look: Format, verdict: str) -> None:
