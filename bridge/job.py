@@ -39,6 +39,7 @@ from bridge.workbook.tables import Table
 REQUEST = "fit request"
 DIGEST = "digest"
 MOST_REDONE = 5
+_LARGEST = 1e150
 
 
 class Outcome(StrEnum):
@@ -197,13 +198,22 @@ def _fitted(model: ModelRequest, tables: Mapping[str, Table], stages: Stages) ->
         return ModelSheet(model, table, taken, None, problems)
     try:
         with stages.part("fit"):
-            result: ModelResult | None = fit_model(model.spec, observations)
+            result: ModelResult | None = _workable(fit_model(model.spec, observations))
     except RegressionError as error:
         result, problems = None, (*problems, refusal.explain(error, model, table, taken))
     except (ArithmeticError, ValueError) as error:
         # Numbers at the edge of what doubles hold: one such model must not keep the others from their results.
-        result, problems = None, (*problems, say("numbers-broke-down", model=model.name, kind=type(error).__name__))
+        result, problems = None, (*problems, refusal.explain_breakdown(error, model))
     return ModelSheet(model, table, taken, result, problems)
+
+
+def _workable(result: ModelResult) -> ModelResult:
+    """The result, if its figures can be squared, as the sheets must. Raises OverflowError."""
+    fit = result.fit
+    for figures in (fit.coefficients, fit.standard_errors, (fit.residual_sd,)):
+        if any(abs(figure) > _LARGEST for figure in figures):
+            raise OverflowError
+    return result
 
 
 # --- around the fit ----------------------------------------------------------------------------

@@ -53,17 +53,22 @@ CATALOGUE: dict[str, tuple[Severity, str]] = {
     "saved-again-and-again": (_R, "{name} is being saved again and again. Try once more when it is quiet."),
     "fewer-rows-than-terms": (
         _R,
-        "The model has {count} coefficients but only {rows} rows to find them from. Give it more rows or fewer terms.",
+        "The model has {count} coefficients ({at}) and {rows} rows to find them from; it needs more rows than "
+        "coefficients. Use fewer terms, or more cases.",
     ),
     "too-many-terms": (
         _R,
-        "The model is wider than can be fitted here: {reason}. Use fewer predictors, levels or crossed columns.",
+        "The model ({at}) is wider than can be fitted here: {reason}. Use fewer predictors, levels or crossed columns.",
     ),
     "numbers-broke-down": (
         _R,
-        "The arithmetic broke down ({kind}) on these rows. Look for values of extreme size in the columns it uses.",
+        "The numbers of this model ({at}) are too large or too small to compute with ({kind}). "
+        "Look for values of extreme size in its columns, or change their unit.",
     ),
-    "cannot-be-fitted": (_R, "The model cannot be fitted to these rows: {reason}. Look at the columns it uses."),
+    "cannot-be-fitted": (
+        _R,
+        "The model cannot be fitted to these rows: {reason} ({at}). Look at the columns it uses.",
+    ),
     # package: files that are left alone
     "empty-file": (_R, "The file is empty. Save the workbook again from your spreadsheet program."),
     "not-a-workbook": (

@@ -17,9 +17,21 @@ def explain(error: RegressionError, model: ModelRequest, table: Table, taken: Ta
     cell = request_cell(entry) if entry else None
     if column is not None and error.index is not None:
         cell = data_cell(table, column, taken.used[error.index])
+    fields = {"cell": cell, "model": model.name, "at": _place(cell)}
     if isinstance(error, TooFewRows):
-        count = error.coefficients
-        return say("fewer-rows-than-terms", cell=cell, model=model.name, rows=error.rows, count=count)
+        return say("fewer-rows-than-terms", rows=error.rows, count=error.coefficients, **fields)
     if isinstance(error, TooManyColumns):
-        return say("too-many-terms", cell=cell, model=model.name, reason=str(error))
-    return say("cannot-be-fitted", cell=cell, model=model.name, reason=str(error))
+        return say("too-many-terms", reason=str(error), **fields)
+    return say("cannot-be-fitted", reason=str(error), **fields)
+
+
+def explain_breakdown(error: ArithmeticError | ValueError, model: ModelRequest) -> Problem:
+    """The message for numbers at the edge of what can be computed with; the cell is the response's entry."""
+    entry = model.entries.get(model.spec.response if model.spec else "", "")
+    cell = request_cell(entry) if entry else None
+    return say("numbers-broke-down", cell=cell, model=model.name, at=_place(cell), kind=type(error).__name__)
+
+
+def _place(cell: str | None) -> str:
+    """The cell as the text names it: one of the request by its address alone."""
+    return cell.removeprefix(request_cell("")) if cell else "this model"
