@@ -29,7 +29,19 @@ STRD = (
     "wampler4",
     "wampler5",
 )
-LITERATURE = ("alaska", "load_cell", "anscombe", "stack_loss", "engel")
+LITERATURE = (
+    "alaska",
+    "load_cell",
+    "anscombe",
+    "stack_loss",
+    "engel",
+    "hald",
+    "forbes",
+    "stopping",
+    "steam",
+    "credit_card",
+    "grunfeld",
+)
 
 
 @dataclass(frozen=True)
