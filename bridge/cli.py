@@ -80,8 +80,9 @@ def parser() -> argparse.ArgumentParser:
 
     keep = command("keep-running", _keep_running, "start the watcher at log-in, from now on")
     keep.add_argument("folders", nargs="*", type=Path, metavar="FOLDER")
-    keep.add_argument("--remove", action="store_true", help="no longer start it")
-    keep.add_argument("--show", action="store_true", help="print what would be set up, change nothing")
+    instead = keep.add_mutually_exclusive_group()
+    instead.add_argument("--remove", action="store_true", help="no longer start it")
+    instead.add_argument("--show", action="store_true", help="print what would be set up, change nothing")
 
     complete = command("completion", _completion, "print the completion script for a shell")
     complete.add_argument("shell", choices=("bash", "zsh", "tcsh"))
@@ -212,6 +213,7 @@ def _keep_running(options: argparse.Namespace) -> int:
         return 2
     start = login.for_this_system([folder.resolve() for folder in options.folders])
     if options.show:
+        print(f"This would be put in {start.path}:", file=sys.stderr)
         print(start.text, end="")
         return 0
     return login.remove(start) if options.remove else login.install(start)

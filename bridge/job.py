@@ -115,6 +115,16 @@ def fit_workbook(
     `note` is a sentence from the watcher to show in the request's status. With `write` False nothing is written.
     With `always_fit` the models are fitted for the report even where nothing has changed since the last fit.
     A file that cannot be used comes back as a refused report; nothing is raised for bad input.
+
+    >>> from pathlib import Path
+    >>> from bridge import samples
+    >>> path = Path("readings.xlsx")
+    >>> size = path.write_bytes(samples.template("calibration"))
+    >>> report = fit_workbook(path)
+    >>> report.outcome.value, report.exit_code
+    ('fitted', 0)
+    >>> round(report.models[0].result.fit.r_squared, 4) > 0.99
+    True
     """
     path = Path(path)
     stages = Stages()

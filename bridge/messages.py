@@ -254,8 +254,8 @@ CATALOGUE: dict[str, tuple[Severity, str]] = {
         "The last fit needed more than {limit} of memory and was ended. Ask for fewer models or terms.",
     ),
     "folder-away": (_W, "{folder} cannot be looked into ({reason}). It is watched again as soon as it is back."),
-    "folder-watched": (_N, "Watching {folder}: {count} workbooks."),
-    "folder-polled": (_N, "Watching {folder} by looking every few seconds: {count} workbooks."),
+    "folder-watched": (_N, "Watching {folder}. Workbooks there: {count}."),
+    "folder-polled": (_N, "Watching {folder} by looking every few seconds. Workbooks there: {count}."),
     "leftover-cleared": (_N, "{path}: cleared up after a bridge that was stopped in the middle of its work."),
     "leftover-put-back": (_N, "{path}: a bridge was stopped in the middle of its work; your latest save is in place."),
     "leftover-set-aside": (

@@ -87,7 +87,7 @@ def _planned(model: ModelSheet) -> str:
     rows = (
         f"; {len(model.taken.used)} of {len(model.taken.used) + len(model.taken.left_out)} rows" if model.taken else ""
     )
-    return f"{_described(spec)}{rows}; {spec.errors} standard errors; {spec.level:.10g} intervals; {spec.fit_by}"
+    return f"{_described(spec)}{rows}; {spec.errors} standard errors; {100 * spec.level:.10g}% intervals; {spec.fit_by}"
 
 
 def _described(spec: ModelSpec) -> str:

@@ -43,7 +43,14 @@ Array = NDArray[np.float64]
 
 
 def fit_model(spec: ModelSpec, observations: Observations) -> ModelResult:
-    """Fit and examine one model on complete rows. Raises RegressionError."""
+    """Fit and examine one model on complete rows. Raises RegressionError.
+
+    >>> x = np.array([1.0, 2.0, 3.0, 4.0, 5.0, 6.0])
+    >>> y = np.array([3.1, 4.9, 7.2, 9.0, 10.8, 13.1])
+    >>> result = fit_model(ModelSpec("y", terms=(NumberTerm("x"),)), Observations({"x": x, "y": y}, len(x)))
+    >>> [column.label for column in result.design.columns], result.fit.coefficients.round(4).tolist()
+    (['intercept', 'x'], [1.0667, 1.9857])
+    """
     try:
         with one_blas_thread(), np.errstate(over="ignore"):
             return _fit_model(spec, observations)
