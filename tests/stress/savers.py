@@ -5,6 +5,7 @@ from __future__ import annotations
 import os
 import random
 import time
+import zlib
 from collections.abc import Callable
 from pathlib import Path
 
@@ -34,9 +35,14 @@ def early_handle(path: Path, data: bytes, chance: random.Random) -> None:
         file.write(data)
 
 
+def _mark(path: Path) -> str:
+    """Seven digits for temporary names: savers may share a folder, but never a workbook."""
+    return f"{zlib.crc32(path.name.encode()) % 16**7:07X}"
+
+
 def renamed_in(path: Path, data: bytes, chance: random.Random) -> None:
     """A temporary file renamed over the name."""
-    aside = path.with_name("lu0000.tmp")
+    aside = path.with_name(f"lu{_mark(path)}.tmp")
     aside.write_bytes(data)
     dawdle(chance, 1)
     os.replace(aside, path)
@@ -44,7 +50,7 @@ def renamed_in(path: Path, data: bytes, chance: random.Random) -> None:
 
 def three_steps(path: Path, data: bytes, chance: random.Random) -> None:
     """A temporary file; the old one renamed away, the new one renamed in, the old one deleted."""
-    aside, away = path.with_name("CEDD4100"), path.with_name("CEDD4101")
+    aside, away = path.with_name(f"{_mark(path)}0"), path.with_name(f"{_mark(path)}1")
     aside.write_bytes(data)
     dawdle(chance, 1)
     os.rename(path, away)
