@@ -13,6 +13,8 @@ from datetime import datetime
 from enum import StrEnum
 from pathlib import Path
 
+import numpy as np
+
 from bridge import __version__
 from bridge.files.fingerprint import Fingerprint
 from bridge.files.snapshot import read
@@ -207,7 +209,7 @@ def _fitted(model: ModelRequest, tables: Mapping[str, Table], stages: Stages) ->
     if any(problem.severity is Severity.REFUSAL for problem in problems):
         return ModelSheet(model, table, taken, None, problems)
     try:
-        with stages.part("fit"):
+        with stages.part("fit"), np.errstate(all="ignore"):  # what breaks down is told in words
             result: ModelResult | None = _workable(fit_model(model.spec, observations))
     except RegressionError as error:
         result, problems = None, (*problems, refusal.explain(error, model, table, taken))

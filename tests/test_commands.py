@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import shutil
 import subprocess
 import sys
 from pathlib import Path
@@ -114,6 +115,8 @@ def test_keep_running_shows_what_it_would_set_up(tmp_path: Path, capsys: pytest.
     assert main(["keep-running", "--show", str(tmp_path)]) == 0
     assert str(tmp_path) in capsys.readouterr().out
     assert main(["keep-running"]) == 2
+    with pytest.raises(SystemExit):
+        main(["keep-running", "--show", "--remove"])
     assert main(["keep-running", str(tmp_path / "none")]) == 2
 
 
@@ -121,6 +124,26 @@ def test_keep_running_shows_what_it_would_set_up(tmp_path: Path, capsys: pytest.
 def test_completion_scripts_name_the_commands(shell: str, capsys: pytest.CaptureFixture[str]) -> None:
     assert main(["completion", shell]) == 0
     assert "keep-running" in capsys.readouterr().out
+
+
+@pytest.mark.skipif(shutil.which("bash") is None, reason="no bash here")
+def test_bash_takes_its_completion(tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    main(["completion", "bash"])
+    script = tmp_path / "completion"
+    script.write_text(capsys.readouterr().out)
+    said = subprocess.run(
+        ["bash", "-c", 'set -e; source "$1"; complete -p savefit', "bash", script], capture_output=True, text=True
+    )
+    assert (said.returncode, said.stderr) == (0, "")
+    assert said.stdout.endswith("savefit\n")
+
+
+def test_output_that_is_no_terminal_is_plain(book: Path) -> None:
+    command = [sys.executable, "-m", "bridge", "fit", str(book), str(book)]
+    said = subprocess.run(command, capture_output=True, check=True)
+    assert not {b"\x1b", b"\r"} & {said.stdout[at : at + 1] for at in range(len(said.stdout))}
+    assert said.stderr == b""
+    assert len(said.stdout.splitlines()) == 2
 
 
 def test_help_and_watch_need_no_numeric_imports() -> None:

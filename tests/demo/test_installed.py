@@ -10,7 +10,7 @@ from pathlib import Path
 
 import pytest
 
-from bridge import samples
+from bridge import __version__, samples
 
 ROOT = Path(__file__).parents[2]
 NEEDED = ("pyproject.toml", "README.md", "bridge", "demo_workbooks", "templates")
@@ -65,3 +65,23 @@ def test_found_where_installed(wheel: Path, tmp_path: Path) -> None:
     where, *found = said.stdout.split("\n")[:-1]
     assert Path(where).is_relative_to(tmp_path)
     assert [int(size) for size in found] == sizes
+
+
+def test_commands_run_where_installed(wheel: Path, tmp_path: Path) -> None:
+    """As after an installation: the version, the demo, a template and its fit, with no file of this tree at hand."""
+    home, work = tmp_path / "installed", tmp_path / "work"
+    work.mkdir()
+    with zipfile.ZipFile(wheel) as package:
+        package.extractall(home)
+
+    def run(*words: str) -> str:
+        program = f"import sys; sys.path[0] = {str(home)!r}; import bridge.cli as c; assert {str(home)!r} in c.__file__"
+        command = [sys.executable, "-c", f"{program}; sys.exit(c.main())", *words]
+        said = subprocess.run(command, cwd=work, capture_output=True, text=True, timeout=120, check=False)
+        assert (said.returncode, said.stderr) == (0, "")
+        return said.stdout
+
+    assert run("--version") == f"savefit {__version__}\n"
+    assert run("demo", "--once").count("fitted") >= 3
+    assert "is ready" in run("new", "quotes.xlsx", "--template", "quote")
+    assert "fitted" in run("fit", "quotes.xlsx")
