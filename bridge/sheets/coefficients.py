@@ -9,8 +9,8 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from bridge.page.cells import Cell, Format
-from bridge.page.sheet import Sheet
+from bridge.page.cells import Format
+from bridge.page.sheet import Block, BlockColumn, Sheet
 from bridge.regression.results import Alias, ModelResult
 from bridge.regression.spec import Errors, FitBy
 from bridge.sheets import effects, figures, measure, recheck, style, top, words
@@ -34,8 +34,8 @@ Span = tuple[tuple[int, int], tuple[int, int]]
 
 @dataclass(frozen=True, slots=True)
 class Place:
-    """Where a model's figures stand: (row, column) of the table with its header row, of the coefficients, of the
-    factor C (C C' is the coefficients' covariance) and of R^-1, each first to last cell."""
+    """Where a model's figures stand, each first to last (row, column): the table with its header row; and, out of the
+    way of whoever sorts the table, the coefficients once more, the factor C (C C' is their covariance) and R^-1."""
 
     table: Span
     coefficients: Span
@@ -64,11 +64,11 @@ _FIRST = 4
 
 def _place(head: int, p: int) -> Place:
     first, last = head + 1, head + p
-    inverse = _WORKING + p + 1
+    factor, inverse = _WORKING + 3, _WORKING + 3 + p + 1
     return Place(
         ((head, 0), (last, _LAST)),
-        ((first, 1), (last, 1)),
-        ((first, _WORKING), (last, _WORKING + p - 1)),
+        ((first, _WORKING + 1), (last, _WORKING + 1)),
+        ((first, factor), (last, factor + p - 1)),
         ((first, inverse), (last, inverse + p - 1)),
     )
 
@@ -100,7 +100,7 @@ def _widths(book: Book) -> dict[int, float]:
     labels = [column.label for _, result in book.fitted for column in result.design.columns]
     widths[0] = min(max(widths[0], measure.widest(labels) + 1), 60.0)
     widest = max((len(result.design.columns) for _, result in book.fitted), default=0)
-    return widths | dict.fromkeys(range(_WORKING, _WORKING + 2 * widest + 2), 12.0)
+    return widths | dict.fromkeys(range(_WORKING, _WORKING + 2 * widest + 5), 12.0)
 
 
 def _block(book: Book, paper: Paper, model: ModelSheet, result: ModelResult, place: Place) -> None:
@@ -152,21 +152,27 @@ def _number(code: str) -> Format:
 
 
 def _working(paper: Paper, result: ModelResult, place: Place) -> None:
-    """C and R^-1 to the right of the table, in quiet type."""
+    """The coefficients again, C and R^-1 to the right of the table, in quiet type."""
     look = replace(style.NUMBER, color=style.QUIET, size=8.0, number_format="0.000E+00")
     head = replace(style.SUBTITLE, size=8.0)
-    texts = (
-        (place.factor, result.fit.covariance_factor, "working figures for intervals: C, with C C' the covariance"),
-        (place.r_inverse, result.fit.r_inverse, "and for distance from the cases: inverse of R, with R'R = X'WX"),
-    )
-    for span, matrix, text in texts:
+    labels = [column.label for column in result.design.columns]
+    (first, column), _ = place.coefficients
+    said = "working figures: what the live estimates and the recheck read"
+    paper.put(column - 1, said, head, first - 2)
+    paper.put(column - 1, "term", head, first - 1)
+    paper.put(column, "coefficient", replace(head, align="right"), first - 1)
+    paper.blocks.append(Block(first, column - 1, (BlockColumn(labels, replace(look, align="left")),)))
+    paper.blocks.append(Block(first, column, (BlockColumn(result.fit.coefficients, look),)))
+    for span, matrix, text in (
+        (place.factor, result.fit.covariance_factor, "for intervals: C, with C C' the covariance of the coefficients"),
+        (place.r_inverse, result.fit.r_inverse, "for distance from the cases: inverse of R, with R'R = X'WX"),
+    ):
         (row, column), _ = span
-        paper.cells[(row - 2, column)] = Cell(text, head)
-        for j, name in enumerate(result.design.columns):
-            paper.cells[(row - 1, column + j)] = Cell(name.label, replace(head, align="right"))
-        for i, values in enumerate(np.asarray(matrix, dtype=float).tolist()):
-            for j, value in enumerate(values):
-                paper.cells[(row + i, column + j)] = Cell(value, look)
+        paper.put(column, text, head, row - 2)
+        for j, label in enumerate(labels):
+            paper.put(column + j, label, replace(head, align="right"), row - 1)
+        columns = tuple(BlockColumn(np.ascontiguousarray(values), look) for values in np.asarray(matrix, dtype=float).T)
+        paper.blocks.append(Block(row, column, columns))
 
 
 # --- under the table ----------------------------------------------------------------------------
