@@ -27,12 +27,10 @@ def even_sample(n: int, most: int) -> Rows:
 
     A fixed stride would meet what repeats along the rows always at the same point.
     """
-    stride = -(-n // most)
-    if stride == 1:
+    if n <= most:
         return np.arange(n)
-    starts = np.arange(0, n, stride)
-    lengths = np.minimum(starts + stride, n) - starts
-    found: Rows = starts + np.random.Generator(np.random.PCG64(SEED)).integers(0, lengths)
+    edges = np.arange(most + 1) * n // most
+    found: Rows = edges[:-1] + np.random.Generator(np.random.PCG64(SEED)).integers(0, np.diff(edges))
     return found
 
 
