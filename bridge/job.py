@@ -155,7 +155,7 @@ def fit_file(path: str, while_open: str, note: str) -> Mapping[str, object]:
         raise FileRefused(report.problems[0])
     fitted = [model.name for model in report.models if model.result is not None]
     refused = [model.name for model in report.models if model.result is None]
-    said = [f"fitted {', '.join(fitted)}"] * bool(fitted) + [f"not fitted: {', '.join(refused)}"] * bool(refused)
+    said = [f"Models: {', '.join(fitted)}"] * bool(fitted) + [f"not fitted: {', '.join(refused)}"] * bool(refused)
     return {
         "outcome": report.outcome.value,
         "message": "; ".join([*said, *([report.message] if report.message else [])]),
