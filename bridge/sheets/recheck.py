@@ -84,14 +84,14 @@ def put_down(book: Book, paper: Paper, model: ModelSheet, result: ModelResult, c
     start, found = paper.row, plan(model, result)
     paper.put(0, TITLE, replace(style.BODY, bold=True, color=style.DEEP))
     paper.row += 1
+    sums = _Sums(model, result, found, coefficients, start)
     if found.refused:
         paper.spread(found.refused, 0, _TYPED + 5, style.PARAGRAPH)
         paper.row += 1
     else:
-        sums = _Sums(model, result, found, coefficients, start)
         sums.put_working(paper)
         sums.put_answers(paper)
-    _chosen_row(book, paper, model, result, coefficients)
+    _chosen_row(book, paper, sums)
     paper.row = start + rows(model, result)
 
 
@@ -197,11 +197,16 @@ class _Sums:
         return live.Rows(cells, numbers, f'(MID({mask},ROW({whole})-ROW({whole.split(":")[0]})+1,1)="1")')
 
     def _residual(self, over: live.Rows) -> str:
-        columns, spec = self.result.design.columns, self.result.spec
+        spec = self.result.spec
+        return f"{over.shaped(spec.response_shape, spec.response)}-({self.predictor(over)})"
+
+    def predictor(self, over: live.Rows) -> str:
+        """The fitted values; long categories by a matrix product over their list of levels, where that is put down."""
+        columns = self.result.design.columns
         lists = {tuple(each): at for at, each in enumerate(_level_rows(self.model, self.result))}
         terms = []
         for first, last, which in live.runs(columns):
-            if which < 0 or last - first < _FEW - 1:
+            if which < 0 or last - first < _FEW - 1 or not self.plan.pieces:
                 terms += [self._term(over, j) for j in range(first, last + 1)]
                 continue
             levels = tuple(_levels(self.model, self.result, first, last, which))
@@ -211,7 +216,7 @@ class _Sums:
             rest = [over.factor(each) for k, each in enumerate(factors) if k != which]
             b = live.span(self._cell(first), self._cell(last))
             terms.append(f"MMULT({'*'.join([over.levels(factors[which].column, across), *rest])},{b})")
-        return f"{over.shaped(spec.response_shape, spec.response)}-({'+'.join(terms)})"
+        return "+".join(terms)
 
     def _term(self, over: live.Rows, j: int) -> str:
         b, column = address(*self._cell(j), absolute=True), self.result.design.columns[j]
@@ -335,8 +340,9 @@ def _allowed(result: ModelResult) -> float:
 # --- one row ------------------------------------------------------------------------------------
 
 
-def _chosen_row(book: Book, paper: Paper, model: ModelSheet, result: ModelResult, coefficients: Span) -> None:
+def _chosen_row(book: Book, paper: Paper, sums: _Sums) -> None:
     """The fitted value of a row whose number the reader types, against what `fit rows` holds for it."""
+    model, result = sums.model, sums.result
     section = next((each for each in rows_sheet.sections(book) if model.name in each.starts), None)
     if section is None or model.taken is None:
         return
@@ -348,9 +354,7 @@ def _chosen_row(book: Book, paper: Paper, model: ModelSheet, result: ModelResult
         name: f"INDEX({live.data_range(table, column, first, last)},{place})"
         for name, column in _columns(model, result).items()
     }
-    one = _Sums(model, result, Plan(), coefficients, 0)
-    over = live.Rows(cells, _numbers(model, result))
-    fitted = "+".join(one._term(over, j) for j in range(len(result.design.columns)))
+    fitted = f"SUMPRODUCT({sums.predictor(live.Rows(cells, _numbers(model, result)))})"
     if len(fitted) * 2 + 60 > live.MOST:
         return
     sheet = book.title("fit rows")
