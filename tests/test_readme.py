@@ -56,7 +56,8 @@ def marked(kind: str) -> str:
 def test_a_command_to_copy_is_a_line_a_shell_reads(kind: str) -> None:
     line = marked(kind)
     subprocess.run(["sh", "-n", "-c", line], check=True)
-    make, install, run = (part.strip() for part in re.split(r"(?<=\}) && |(?<=\.) && |(?<=') && ", line))
+    make, rest = line.split("; }; } && ")
+    install, run = rest.split(" && ")
     assert make.startswith("{ python3 -m venv .venv ||")
     assert install.startswith(".venv/bin/pip install -q ")
     assert run.startswith(".venv/bin/")
