@@ -70,14 +70,15 @@ def best(problem: Problem, measure: Measure | None, most: int) -> Ranked:
 
 
 def count(problem: Problem) -> int:
-    """How many subsets there are, a unit never without what it needs."""
+    """How many subsets there are: a unit never without what it needs, and at least one coefficient."""
     involved = sum({1 << unit for needed in problem.needs for unit in range(problem.units) if needed >> unit & 1})
     needy = [needed for needed in problem.needs if needed]
     places = [unit for unit in range(problem.units) if involved >> unit & 1]
     chosen = np.arange(1 << len(places))
     masks = sum(((chosen >> at & 1) << unit for at, unit in enumerate(places)), np.zeros_like(chosen))
     ways = sum((((masks & needed) == needed).astype(np.int64) for needed in needy), np.zeros_like(chosen))
-    return int(np.sum(1 << ways)) << (problem.units - len(places) - len(needy))
+    everything = int(np.sum(1 << ways)) << (problem.units - len(places) - len(needy))
+    return everything - int(problem.base == 0)
 
 
 def eliminated(products: Array) -> tuple[float, int]:

@@ -24,6 +24,7 @@ from bridge.regression.results import SearchResult, Subset
 from bridge.regression.spec import ModelSpec, Observations, Search
 
 MOST_CANDIDATES = 30
+MOST_BEYOND_ROWS = 20  # where all terms together have as many coefficients as there are rows, no branch can be cut
 SHOWN = 10
 CONSTANT = 1e-12  # a column that varies by less than this share of its size does not vary
 TRIED = 3  # best subsets of each number of coefficients that are cross-validated
@@ -49,10 +50,13 @@ class _Problem:
 def run(spec: ModelSpec, observations: Observations) -> SearchResult:
     """The chosen terms by `spec.search`, with the runners-up. Figures as elsewhere: adjusted R2 is better when larger.
 
-    Raises TooManyColumns above 30 candidates, TooFewRows where there are not more rows than the forced terms (for Cp:
-    all terms) have coefficients, and RegressionError where the model with all candidates cannot be laid out.
+    Raises TooManyColumns above 30 candidates, TooFewRows where there are not more rows than the forced terms (for
+    Cp, and above 20 candidates: all terms) have coefficients, and RegressionError where the model with all candidates cannot be laid out.
     """
     problem = _problem(spec, observations)
+    beyond = problem.full_size >= observations.n
+    if beyond and (len(problem.units) > MOST_BEYOND_ROWS or spec.search is Search.CP):
+        raise TooFewRows(observations.n, problem.full_size)
     if spec.search is Search.CROSS_VALIDATION:
         best = _cross_validated(problem, branching.best(problem.tree, None, TRIED), spec, observations)
     else:
@@ -172,8 +176,6 @@ def _measure(spec: ModelSpec, problem: _Problem) -> Measure:
         total = max(problem.tss, 1e-300) / (n - int(spec.intercept))
         return Measure(lambda rss, p: rss / (n - p), lambda value, p: value * (n - p), lambda value: 1 - value / total)
     if spec.search is Search.CP:  # Mallows (1973)
-        if n <= problem.full_size:
-            raise TooFewRows(n, problem.full_size)
         error = max(problem.full_rss / (n - problem.full_size), 1e-300)
         return Measure(
             lambda rss, p: rss / error - n + 2 * p, lambda value, p: (value + n - 2 * p) * error, lambda value: value
