@@ -50,8 +50,9 @@ class _Problem:
 def run(spec: ModelSpec, observations: Observations) -> SearchResult:
     """The chosen terms by `spec.search`, with the runners-up. Figures as elsewhere: adjusted R2 is better when larger.
 
-    Raises TooManyColumns above 30 candidates, TooFewRows where there are not more rows than the forced terms (for
-    Cp, and above 20 candidates: all terms) have coefficients, and RegressionError where the model with all candidates cannot be laid out.
+    Raises TooManyColumns above 30 candidates, TooFewRows where there are not more rows than the forced terms (for Cp,
+    and above 20 candidates: all terms) have coefficients, and RegressionError where the model with all candidates
+    cannot be laid out.
     """
     problem = _problem(spec, observations)
     beyond = problem.full_size >= observations.n
