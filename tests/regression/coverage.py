@@ -1,0 +1,194 @@
+"""Simulated coverage of the 95% intervals for the mean and for a single case.
+
+`python -m tests.regression.coverage [--repeats 2000]` prints, model by model, in what share of the repeats the truth
+lay within. `test_coverage.py` runs a few repeats of each. The design stays, the response is drawn anew.
+
+Each model is drawn from what its intervals claim to serve. Two lines are there as cautions and claim less:
+- the case interval under uneven spread has the right share over all cases together, not at a given predictor;
+- serial errors with the rule-of-thumb number of lags on few rows fall short (Andrews 1991, Econometrica 59, table 3).
+"""
+
+from __future__ import annotations
+
+import argparse
+import time
+from collections.abc import Callable
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from bridge.regression.core import fit_model
+from bridge.regression.estimates import estimate
+from bridge.regression.spec import CategoryTerm, Errors, FitBy, Levels, ModelSpec, NumberTerm, Observations, Shape
+
+REPEATS = 2_000
+
+Noise = Callable[[np.random.Generator, Observations], np.ndarray]
+
+
+@dataclass(frozen=True)
+class Scenario:
+    """A model with its design and new cases; `noise` for the rows, `case_noise` for the cases, on the fitted scale.
+
+    `mean`, `case`: whether the interval claims 95%. `cases` have the columns of the design.
+    """
+
+    name: str
+    spec: ModelSpec
+    design: Observations
+    cases: Observations
+    noise: Noise
+    case_noise: Noise
+    mean: bool = True
+    case: bool = True
+
+
+@dataclass(frozen=True)
+class Covered:
+    """Shares within the interval, and their standard errors over the repeats."""
+
+    mean: float
+    mean_error: float
+    case: float
+    case_error: float
+
+
+def level(rows: Observations) -> np.ndarray:
+    """The truth on the fitted scale."""
+    found = 2.0 + 0.3 * rows.numbers("a")
+    return found + (0.5 * rows.levels("kind").codes if "kind" in rows.columns else 0.0)
+
+
+def run(scenario: Scenario, repeats: int, seed: int = 1) -> Covered:
+    """Draw, fit and look, so many times."""
+    rng = np.random.default_rng(seed)
+    shape = scenario.spec.response_shape
+    weights = None if scenario.spec.weight is None else scenario.cases.numbers("w")
+    truth = level(scenario.cases)
+    in_mean, in_case = np.empty(repeats), np.empty(repeats)
+    for at in range(repeats):
+        eta = level(scenario.design) + scenario.noise(rng, scenario.design)
+        y = np.exp(eta) if shape is Shape.LOG else eta
+        result = fit_model(scenario.spec, Observations({**scenario.design.columns, "y": y}, scenario.design.n))
+        found = estimate(result, scenario.cases, weights)
+        single = truth + scenario.case_noise(rng, scenario.cases)
+        mean = truth
+        if shape is Shape.LOG:  # of a lognormal response
+            mean, single = np.exp(truth + 0.3**2 / 2), np.exp(single)
+        in_mean[at] = np.mean((found.mean_low <= mean) & (mean <= found.mean_high))
+        in_case[at] = np.mean((found.case_low <= single) & (single <= found.case_high))
+    errors = [float(share.std(ddof=1) / np.sqrt(repeats)) for share in (in_mean, in_case)]
+    return Covered(float(in_mean.mean()), errors[0], float(in_case.mean()), errors[1])
+
+
+# --- what is drawn -------------------------------------------------------------------------------------------
+
+
+def even(rng: np.random.Generator, rows: Observations) -> np.ndarray:
+    return 0.3 * rng.standard_normal(rows.n)
+
+
+def by_weight(rng: np.random.Generator, rows: Observations) -> np.ndarray:
+    return 0.5 * rng.standard_normal(rows.n) / np.sqrt(rows.numbers("w"))
+
+
+def by_size(rng: np.random.Generator, rows: Observations) -> np.ndarray:
+    return 0.1 * rows.numbers("a") * rng.standard_normal(rows.n)
+
+
+def by_group(rng: np.random.Generator, rows: Observations) -> np.ndarray:
+    groups = rows.numbers("group").astype(int)
+    return 0.4 * rng.standard_normal(groups.max() + 1)[groups] + 0.3 * rng.standard_normal(rows.n)
+
+
+def one_after_another(rng: np.random.Generator, rows: Observations) -> np.ndarray:
+    """Each error holds half of the one before: a moving average."""
+    drawn = 0.3 * rng.standard_normal(rows.n + 1)
+    return drawn[1:] + 0.5 * drawn[:-1]
+
+
+def single(rng: np.random.Generator, rows: Observations) -> np.ndarray:
+    """A case of that series on its own."""
+    return 0.3 * np.sqrt(1.25) * rng.standard_normal(rows.n)
+
+
+def with_wild_ones(rng: np.random.Generator, rows: Observations) -> np.ndarray:
+    drawn = 0.3 * rng.standard_normal(rows.n)
+    return np.where(rng.random(rows.n) < 0.05, 10 * drawn, drawn)
+
+
+def _design(n: int, seed: int = 7) -> Observations:
+    rng = np.random.default_rng(seed)
+    columns: dict[str, np.ndarray | Levels] = {
+        "a": np.round(rng.gamma(3.0, 1.0, n) + 0.5, 2),
+        "kind": Levels(np.concatenate([np.arange(3), rng.integers(0, 3, n - 3)]), ("p", "q", "r")),
+        "w": np.round(rng.uniform(0.2, 4, n), 2),
+        "time": np.arange(float(n)),
+        "group": np.arange(n) // 5.0,
+    }
+    return Observations(columns, n)
+
+
+def _grouped_design(groups: int) -> Observations:
+    """The predictor is the same within a group: where ordinary standard errors mislead most."""
+    rows = _design(groups * 5)
+    return Observations({**rows.columns, "a": np.repeat(rows.numbers("a")[:groups], 5)}, rows.n)
+
+
+def _cases() -> Observations:
+    a = np.array([1.0, 2.5, 4.0, 7.0])
+    kind = Levels(np.array([0, 1, 2, 0]), ("p", "q", "r"))
+    return Observations({"a": a, "kind": kind, "w": np.array([0.3, 1.0, 2.0, 4.0]), "group": np.arange(4.0)}, 4)
+
+
+LINE = ModelSpec("y", terms=(NumberTerm("a"),))
+WITH_KIND = ModelSpec("y", terms=(NumberTerm("a"), CategoryTerm("kind")))
+
+
+def scenarios() -> list[Scenario]:
+    """In the order of the table."""
+    cases = _cases()
+    line_cases = Observations({k: v for k, v in cases.columns.items() if k != "kind"}, 4)
+    bare = {n: Observations({k: v for k, v in _design(n).columns.items() if k != "kind"}, n) for n in (120, 200, 2_000)}
+    anywhere = bare[200]
+    groups = _grouped_design(80)
+    groups = Observations({k: v for k, v in groups.columns.items() if k != "kind"}, groups.n)
+    serial = replace(LINE, errors=Errors.SERIAL, order="time")
+    return [
+        Scenario("ordinary, 30 rows", WITH_KIND, _design(30), cases, even, even),
+        Scenario("weighted, 30 rows", replace(WITH_KIND, weight="w"), _design(30), cases, by_weight, by_weight),
+        Scenario("log response, 60 rows", replace(WITH_KIND, response_shape=Shape.LOG), _design(60), cases, even, even),
+        Scenario("uneven spread (HC3), 200 rows", replace(LINE, errors=Errors.UNEVEN_SPREAD), bare[200], line_cases,
+                 by_size, by_size, case=False),
+        Scenario("uneven spread, cases like the rows", replace(LINE, errors=Errors.UNEVEN_SPREAD), bare[200], anywhere,
+                 by_size, by_size, case=False),
+        Scenario("grouped, 80 groups of 5", replace(LINE, errors=Errors.GROUPED, group="group"), groups, line_cases,
+                 by_group, by_group),
+        Scenario("serial, 2,000 rows, 25 lags", replace(serial, lags=25), bare[2_000], line_cases, one_after_another,
+                 single),
+        Scenario("serial, 120 rows, 4 lags by rule", serial, bare[120], line_cases, one_after_another, single,
+                 mean=False),
+        Scenario("resistant, 5% wild, 120 rows", replace(LINE, fit_by=FitBy.RESISTANT), bare[120], line_cases,
+                 with_wild_ones, even, case=False),
+    ]  # fmt: skip
+
+
+def main() -> None:
+    """Print the table."""
+    parser = argparse.ArgumentParser(description=__doc__.splitlines()[0])
+    parser.add_argument("--repeats", type=int, default=REPEATS)
+    asked = parser.parse_args()
+    start = time.perf_counter()
+    print(
+        f"{'model':38s} {'mean interval':>18s} {'case interval':>18s}   (share within, 2 Monte-Carlo standard errors)"
+    )
+    for scenario in scenarios():
+        found = run(scenario, asked.repeats)
+        mean = f"{found.mean:.1%} ± {2 * found.mean_error:.1%}{'' if scenario.mean else ' *'}"
+        case = f"{found.case:.1%} ± {2 * found.case_error:.1%}{'' if scenario.case else ' *'}"
+        print(f"{scenario.name:38s} {mean:>18s} {case:>18s}", flush=True)
+    print(f"* not claimed to be 95%. {asked.repeats} repeats each, {time.perf_counter() - start:.0f} s in all.")
+
+
+if __name__ == "__main__":
+    main()
