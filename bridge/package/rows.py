@@ -149,7 +149,7 @@ def _single_cells(
 
 def _around_text(text: str, live: bool) -> tuple[str, str]:
     """What stands before and after the formula in a text cell, behind its reference and style."""
-    if not text:
+    if not text and not live:
         return "/>", ""
     if live:
         return ' t="str">', f"<v>{xml.xstring(text[:_LONGEST_TEXT])}</v></c>"

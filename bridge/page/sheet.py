@@ -16,12 +16,12 @@ from bridge.page.charts import Chart
 class BlockColumn:
     """One column of a dense block.
 
-    `values` is a float array (NaN: an empty cell) or a sequence of texts (empty text: an empty cell).
+    `values` is a float array (NaN: an empty cell) or a sequence of texts and numbers (empty text: an empty cell).
     With `formula`, a template in which `{row}` stands for the one-based sheet row and `{key}` for the
-    matching entry of `keys`, each cell is a live formula whose value is `values`.
+    matching entry of `keys`, each cell is a live formula whose value is `values`; an empty text is a value then.
     """
 
-    values: NDArray[np.float64] | Sequence[str]
+    values: NDArray[np.float64] | Sequence[str | float]
     format: Format
     formula: str | None = None
     keys: Sequence[int] | NDArray[np.int64] | None = None

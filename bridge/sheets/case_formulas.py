@@ -1,126 +1,147 @@
-"""The live formulas of one case line, and the values they have now.
+"""The live formulas of the case lines, one template each: `{row}` stands for the line's row.
 
-The formulas are evaluated here with the same arithmetic in the same order, so that the stored values are what a
-spreadsheet will compute.
+`case_values` gives what they hold now, by the same arithmetic.
 """
 
 from __future__ import annotations
 
-import math
-from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass
+from collections.abc import Iterator, Sequence
 
-import numpy as np
-from numpy.typing import NDArray
-
-from bridge.page.cells import Formula, address, reference, text_literal
-from bridge.regression.estimates import mean_in_units, median_in_units
+from bridge.page.cells import column_letters, reference
 from bridge.regression.results import BackTransform, DesignColumn, Factor, ModelResult
 from bridge.regression.spec import BackOn, NumberTerm, Shape
 from bridge.regression.tails import t_quantile
 from bridge.sheets import figures, live
-from bridge.sheets.cases import ModelColumns, Plan
+from bridge.sheets.cases import A_CELL, Input, ModelColumns, Plan
 from bridge.sheets.coefficients import Place
-from bridge.workbook.kinds import number_text
-from bridge.workbook.request import Scalar
 
-Entries = Mapping[str, Scalar]
-Array = NDArray[np.float64]
-Way = Callable[[Array, BackTransform | None], Array]
+FAR = "far from the cases: an unusual combination"
+BEYOND = "beyond the data: "
+_LONGEST_NAME = 60  # of a column in a remark
 
-
-@dataclass(frozen=True, slots=True)
-class Evaluated:
-    """A case under one model: state 0 (no case), 1 (not complete) or 2, and what the helpers hold."""
-
-    state: int
-    x: tuple[float, ...]
-    eta: float
-    se: float
-    leverage: float
-    problems: str
-    beyond: str
+LIMITS = {
+    Shape.LOG: ("<=0", "must be above 0"),
+    Shape.ROOT: ("<0", "must not be below 0"),
+    Shape.RECIPROCAL: ("=0", "must not be 0"),
+}
 
 
-def evaluate(columns: ModelColumns, entries: Entries, named: bool) -> Evaluated:
-    """What the formulas of a line give for these entries."""
-    result = columns.result
-    inputs = _used(result)
-    if not any(name in entries for name in inputs) and not (named and not inputs):
-        return Evaluated(0, (0.0,) * columns.p, 0.0, 0.0, 0.0, "", "")
-    problems = "".join(_problem(result, name, entries.get(name)) for name in inputs)
-    beyond = "".join(_beyond(columns, name, entries.get(name)) for name in inputs)
-    if problems:
-        return Evaluated(1, (0.0,) * columns.p, 0.0, 0.0, 0.0, problems, beyond)
-    x = np.array([_value(column, entries) for column in result.design.columns])
-    eta = float(x @ result.fit.coefficients)
-    se = math.sqrt(float(np.sum((x @ result.fit.covariance_factor) ** 2)))
-    leverage = float(np.sum((x @ result.fit.r_inverse) ** 2))
-    return Evaluated(2, tuple(x.tolist()), eta, se, leverage, problems, beyond)
+# --- words shared with the values ---------------------------------------------------------------
 
 
-def helpers(
-    columns: ModelColumns, plan: Plan, place: Place, sheet: str, row: int, now: Evaluated
-) -> dict[int, Formula]:
-    """The helper cells of a line, by column. `sheet` is the tab of `fit coefficients`."""
-    result = columns.result
-    inputs = _used(result)
-    cells = {name: plan.cell(name, row) for name in inputs}
-    state = f"${address(row, columns.state)}"
-    design = f"${address(row, columns.x)}:${address(row, columns.x + columns.p - 1)}"
-    filled = f"COUNTA({','.join(cells.values())})" if cells else f"COUNTA($A{row + 1})"
-    problems = f"${address(row, columns.problems)}"
-    made = {
-        columns.x + j: Formula(f"IF({state}=2,{live.product(column, cells)}*1,0)", now.x[j])
-        for j, column in enumerate(result.design.columns)
-    }
-    made[columns.state] = Formula(f'IF({filled}=0,0,IF({problems}="",2,1))', now.state)
-    b, c, r = (reference(sheet, *span) for span in (place.coefficients, place.factor, place.r_inverse))
-    made[columns.eta] = Formula(f"SUMPRODUCT(MMULT({design},{b}))", now.eta)
-    made[columns.se] = Formula(f"SQRT(SUMPRODUCT(MMULT({design},{c})^2))", now.se)
-    made[columns.leverage] = Formula(f"SUMPRODUCT(MMULT({design},{r})^2)", now.leverage)
-    texts = [_problem_formula(result, plan, name, cells[name]) for name in inputs]
-    made[columns.problems] = Formula(_joined(texts, f"{filled}=0"), now.problems)
-    texts = [text for name in inputs if (text := _beyond_formula(columns, name, cells[name]))]
-    made[columns.beyond] = Formula(_joined(texts, f"{state}=0"), now.beyond)
-    return made
+def said(one: Input, problem: str) -> str:
+    """A problem of an input as a part of the remark."""
+    name = one.name if len(one.name) <= _LONGEST_NAME else one.name[: _LONGEST_NAME - 1] + "…"
+    return f"{name} {problem}; "
 
 
-def answers(columns: ModelColumns, plan: Plan, row: int, now: Evaluated, entries: Entries) -> dict[str, Formula]:
-    """The figures of a line by header, as people see them."""
-    result = columns.result
-    fit, back = result.fit, shown_back(result)
-    state, eta, se = (f"${address(row, at)}" for at in (columns.state, columns.eta, columns.se))
-    t = live.number(t_quantile(result.spec.level, fit.df_interval))
-    weight, case = _case(result, plan, row, se)
-    reach = t_quantile(result.spec.level, fit.df_interval)
-    case_sd = _case_sd(result, now, entries)
-    made: dict[str, Formula] = {}
-
-    def put(header: str, text: str, value: float) -> None:
-        good = now.state == 2 and math.isfinite(value)
-        made[header] = Formula(f'IF({state}=2,{text},"")', value if good else "")
-
-    put("estimate", mean_formula(back, eta), one_value(mean_in_units, now.eta, back))
-    if "median" in columns.headers:
-        put("median", median_formula(back, eta), one_value(median_in_units, now.eta, back))
-    for header, sign, way in (("mean low", "-", -1), ("mean high", "+", 1)):
-        value = one_value(mean_in_units, now.eta + way * reach * now.se, back)
-        put(header, mean_formula(back, f"({eta}{sign}{t}*{se})"), value)
-    for header, sign, way in (("case low", "-", -1), ("case high", "+", 1)):
-        text = median_formula(back, f"({eta}{sign}{t}*{case})")
-        text = f'IF({weight},{text},"")' if weight else text
-        put(header, text, one_value(median_in_units, now.eta + way * reach * case_sd, back))
-    made["remark"] = _remark(columns, plan, row, now, entries)
-    return made
+MISSING, NO_NUMBER, STRANGE = "is missing", "is not a number", "is none of the known kinds"
 
 
-# --- figures --------------------------------------------------------------------------------------
+def no_weight(weight: Input) -> str:
+    """What a weighted model says where the case has no weight."""
+    return f"give {weight.name} for the interval of a single case; "
+
+
+def above(columns: ModelColumns, name: str) -> tuple[float, str, float, str] | None:
+    """The data's reach of a number input: highest value and what is said above it, lowest and what is said below."""
+    found = next((each for each in columns.result.ranges if each.column == name), None)
+    if found is None or shape_of(columns.result, name) is None:
+        return None
+    one = columns.inputs[name]
+    high, low = (figures.plain_number(end) for end in (found.high, found.low))
+    return found.high, said(one, f"above {high}"), found.low, said(one, f"below {low}")
+
+
+def shape_of(result: ModelResult, name: str) -> Shape | None:
+    """How a model takes a column's numbers; None for a category."""
+    term = next(each for each in result.spec.terms if each.column == name)
+    return term.shape if isinstance(term, NumberTerm) else None
+
+
+def most_leverage(result: ModelResult) -> float:
+    """The leverage beyond which a case is far from the others."""
+    return result.max_leverage * (1 + 1e-9)
+
+
+def own_levels(columns: ModelColumns, name: str) -> tuple[int, ...]:
+    """Which of the input's levels the model knows, by their numbers from 1 on."""
+    known = {level for level, _ in dict(columns.result.design.levels)[name]}
+    return tuple(at for at, level in enumerate(columns.inputs[name].levels, 1) if level in known)
 
 
 def shown_back(result: ModelResult) -> BackTransform | None:
     """How estimates come back to original units; None where they are shown as fitted."""
     return result.back if result.spec.back_on is BackOn.ORIGINAL else None
+
+
+# --- helpers ------------------------------------------------------------------------------------
+
+
+def code(plan: Plan, one: Input) -> str:
+    """Which of the input's levels the case has: its number in the list, 0 for none of them."""
+    first, last = plan.lists[one.name]
+    levels = live.span(first, last)
+    place = f"(COLUMN({levels})-COLUMN({live.span(first, first)})+1)"
+    by_text = f"SUMPRODUCT(EXACT({levels},{one.cell})*{place})"
+    if one.numbers is not None:
+        by_number = f"SUMPRODUCT(({levels}*1=N({one.cell}))*{place})"
+        by_text = f"IF(ISTEXT({one.cell}),{by_text},{by_number})"
+    return f'IF(ISERROR({one.cell}),0,IF(TRIM({one.cell})="",0,{by_text}))'
+
+
+def helpers(columns: ModelColumns, plan: Plan, place: Place, sheet: str) -> Iterator[str]:
+    """The templates of the model's helper columns, from its `x` on. `sheet` is the tab of `fit coefficients`."""
+    state = _cell(columns.state)
+    for column in columns.result.design.columns:
+        yield f"IF({state}=2,{_product(columns, plan, column)}*1,0)"
+    design = f"{_cell(columns.x)}:{_cell(columns.x + columns.p - 1)}"
+    filled = _filled(columns)
+    problems = "&".join(_cell(at) for at in columns.problems)
+    yield f'IF({filled}=0,0,IF({problems}="",2,1))'
+    b, c, r = (reference(sheet, *span) for span in (place.coefficients, place.factor, place.r_inverse))
+    yield f"SUMPRODUCT(MMULT({design},{b}))"
+    yield f"SQRT(SUMPRODUCT(MMULT({design},{c})^2))"
+    yield f"SUMPRODUCT(MMULT({design},{r})^2)"
+    names = tuple(columns.inputs)
+    yield from _joined([_problem(columns, plan, name) for name in names], f"{filled}=0", columns.parts)
+    yield from _joined([_beyond(columns, name) for name in names], f"{state}=0", columns.parts)
+
+
+def figure_texts(columns: ModelColumns) -> Iterator[tuple[str, str]]:
+    """The templates of the figures that people see, by header; the remark is not among them."""
+    result = columns.result
+    back = shown_back(result)
+    state, eta, se = (_cell(at) for at in (columns.state, columns.eta, columns.se))
+    t = live.number(t_quantile(result.spec.level, result.fit.df_interval))
+    variance = live.number(result.fit.residual_sd**2)
+    weight = columns.weight.cell if columns.weight is not None else ""
+    case = f"SQRT({se}^2+{variance}/{weight})" if weight else f"SQRT({se}^2+{variance})"
+    made = {
+        "estimate": mean_formula(back, eta),
+        "median": median_formula(back, eta),
+        "mean low": mean_formula(back, f"({eta}-{t}*{se})"),
+        "mean high": mean_formula(back, f"({eta}+{t}*{se})"),
+        "case low": median_formula(back, f"({eta}-{t}*{case})"),
+        "case high": median_formula(back, f"({eta}+{t}*{case})"),
+    }
+    for header in columns.headers[:-1]:
+        text = made[header]
+        if weight and header.startswith("case"):
+            text = f'IF(N({weight})>0,{text},"")'
+        yield header, f'IF({state}=2,{text},"")'
+
+
+def remark(columns: ModelColumns) -> str:
+    """The template of the remark."""
+    state, leverage = _cell(columns.state), _cell(columns.leverage)
+    problems, beyond = ("&".join(_cell(at) for at in each) for each in (columns.problems, columns.beyond))
+    far = f'IF({leverage}>{live.number(most_leverage(columns.result))},{live.literal(FAR + "; ")},"")'
+    outside = f'IF({beyond}="",{far},{live.literal(BEYOND)}&{beyond})'
+    if columns.weight is not None:
+        outside = f'{outside}&IF(N({columns.weight.cell})>0,"",{live.literal(no_weight(columns.weight))})'
+    whole = f"IF({state}=1,{problems},{outside})"
+    return f'IF({state}=0,"",LEFT({whole},MAX(LEN({whole})-2,0)))'
 
 
 def mean_formula(back: BackTransform | None, eta: str) -> str:
@@ -139,184 +160,82 @@ def median_formula(back: BackTransform | None, eta: str) -> str:
     return f"EXP({eta})" if back.kind == "log" else f"MAX({eta},0)^2"
 
 
-def one_value(way: Way, eta: float, back: BackTransform | None) -> float:
-    """One estimate in units; NaN where eta is no number."""
-    if not math.isfinite(eta):
-        return math.nan
-    with np.errstate(over="ignore"):
-        return float(way(np.array([eta]), back)[0])
+# --- their pieces -------------------------------------------------------------------------------
 
 
-def _case(result: ModelResult, plan: Plan, row: int, se: str) -> tuple[str, str]:
-    """The condition under which a single case can be judged (a weight, for weighted models), and its SD."""
-    variance = live.number(result.fit.residual_sd**2)
-    if result.spec.weight is None:
-        return "", f"SQRT({se}^2+{variance})"
-    weight = plan.cell(result.spec.weight, row)
-    return f"N({weight})>0", f"SQRT({se}^2+{variance}/{weight})"
+def _cell(column: int) -> str:
+    return f"${column_letters(column)}{{row}}"
 
 
-def _case_sd(result: ModelResult, now: Evaluated, entries: Entries) -> float:
-    variance = result.fit.residual_sd**2
-    if result.spec.weight is not None:
-        weight = entries.get(result.spec.weight)
-        if not _is_number(weight) or float(weight) <= 0:  # type: ignore[arg-type]
-            return math.nan
-        variance /= float(weight)  # type: ignore[arg-type]
-    return math.sqrt(now.se**2 + variance)
+def _product(columns: ModelColumns, plan: Plan, column: DesignColumn) -> str:
+    return "*".join(_factor(columns.inputs[factor.column], plan, factor) for factor in column.factors) or "1"
 
 
-# --- one entry ------------------------------------------------------------------------------------
-
-
-def _used(result: ModelResult) -> tuple[str, ...]:
-    """The data columns whose entries the model needs."""
-    return tuple(term.column for term in result.spec.terms)
-
-
-def _value(column: DesignColumn, entries: Entries) -> float:
-    value = 1.0
-    for factor in column.factors:
-        value *= _factor(factor, entries[factor.column])
-    return value
-
-
-def _factor(factor: Factor, entry: Scalar) -> float:
+def _factor(one: Input, plan: Plan, factor: Factor) -> str:
     if factor.kind == "level":
-        return 1.0 if as_level(entry) == factor.level else 0.0
-    x = float(entry)
+        return f"({_cell(plan.codes[one.name])}={one.levels.index(factor.level) + 1})"
+    cell = f"N({one.cell})" if one.yes_no else one.cell
     if factor.kind == "log":
-        return math.log(x)
+        return f"LN({cell})"
     if factor.kind == "root":
-        return math.sqrt(x)
+        return f"SQRT({cell})"
     if factor.kind == "reciprocal":
-        return 1 / x
+        return f"(1/{cell})"
     if factor.kind == "hinge":
-        return max(x - factor.knot, 0.0)
-    return float(x**factor.exponent)
+        return f"MAX({cell}-{live.number(factor.knot)},0)"
+    return cell if factor.exponent == 1 else f"{cell}^{factor.exponent}"
 
 
-def as_level(entry: Scalar) -> str:
-    """A category entry as the level that it names."""
-    if isinstance(entry, bool):
-        return "TRUE" if entry else "FALSE"
-    return number_text(float(entry)) if isinstance(entry, int | float) else entry
-
-
-def _is_number(entry: Scalar | None) -> bool:
-    return isinstance(entry, int | float) and not isinstance(entry, bool)
-
-
-def _shape(result: ModelResult, name: str) -> Shape | None:
-    term = next(each for each in result.spec.terms if each.column == name)
-    return term.shape if isinstance(term, NumberTerm) else None
-
-
-_LIMITS = {
-    Shape.LOG: ("<=0", "must be above 0"),
-    Shape.ROOT: ("<0", "must not be below 0"),
-    Shape.RECIPROCAL: ("=0", "must not be 0"),
-}
-
-
-def _problem(result: ModelResult, name: str, entry: Scalar | None) -> str:
-    if entry is None:
-        return f"{name} is missing; "
-    shape = _shape(result, name)
-    if shape is None:
-        levels = [level for level, _ in dict(result.design.levels)[name]]
-        return "" if as_level(entry) in levels else f"{name} is none of the known kinds; "
-    if not _is_number(entry):
-        return f"{name} is not a number; "
-    x = float(entry)
-    wrong = {Shape.LOG: x <= 0, Shape.ROOT: x < 0, Shape.RECIPROCAL: x == 0}.get(shape, False)
-    return f"{name} {_LIMITS[shape][1]}; " if wrong else ""
-
-
-def _problem_formula(result: ModelResult, plan: Plan, name: str, cell: str) -> str:
-    missing = text_literal(f"{name} is missing; ")
-    shape = _shape(result, name)
-    if shape is None:
-        strange = text_literal(f"{name} is none of the known kinds; ")
-        levels = [level for level, _ in dict(result.design.levels)[name]]
-        if levels and len(levels) <= 20 and sum(map(len, levels)) < 400:
-            known = "+".join(f"EXACT({cell},{text_literal(level)})" for level in levels)
+def _filled(columns: ModelColumns) -> str:
+    """How many of the model's inputs are filled; for a model without any, whether the case has a name."""
+    at = sorted(one.column for one in columns.inputs.values()) or [0]
+    runs: list[list[int]] = []
+    for column in at:
+        if runs and runs[-1][-1] == column - 1:
+            runs[-1].append(column)
         else:
-            known = f"SUMPRODUCT(EXACT({plan.levels[name]},{cell})*1)"
-        return f'IF({cell}="",{missing},IF({known}>0,"",{strange}))'
-    strange = text_literal(f"{name} is not a number; ")
-    inside = '""'
-    if shape in _LIMITS:
-        test, words = _LIMITS[shape]
-        inside = f'IF({cell}{test},{text_literal(f"{name} {words}; ")},"")'
-    return f'IF({cell}="",{missing},IF(ISNUMBER({cell}),{inside},{strange}))'
+            runs.append([column])
+    ranges = [_cell(run[0]) if len(run) == 1 else f"{_cell(run[0])}:{_cell(run[-1])}" for run in runs]
+    return "+".join(f"COUNTA({','.join(ranges[start : start + 200])})" for start in range(0, len(ranges), 200))
 
 
-def _reach(columns: ModelColumns, name: str) -> tuple[float, float] | None:
-    if _shape(columns.result, name) is None:
-        return None
-    found = next((each for each in columns.result.ranges if each.column == name), None)
-    return (found.low, found.high) if found is not None else None
+def _problem(columns: ModelColumns, plan: Plan, name: str) -> str:
+    one, shape = columns.inputs[name], shape_of(columns.result, name)
+    missing = live.literal(said(one, MISSING))
+    if shape is None:
+        strange = live.literal(said(one, STRANGE))
+        known = f'IF({_known(columns, plan, name)},"",{strange})'
+        return f'IF(ISERROR({one.cell}),{strange},IF(TRIM({one.cell})="",{missing},{known}))'
+    strange = live.literal(said(one, NO_NUMBER))
+    fine = '""'
+    if shape in LIMITS:
+        test, text = LIMITS[shape]
+        fine = f'IF({one.cell}{test},{live.literal(said(one, text))},"")'
+    good = f"ISNUMBER({one.cell})" if not one.yes_no else f"OR(ISNUMBER({one.cell}),ISLOGICAL({one.cell}))"
+    return f'IF(ISERROR({one.cell}),{strange},IF(TRIM({one.cell})="",{missing},IF({good},{fine},{strange})))'
 
 
-def _beyond(columns: ModelColumns, name: str, entry: Scalar | None) -> str:
-    reach = _reach(columns, name)
-    if reach is None or not _is_number(entry):
-        return ""
-    x = float(entry)  # type: ignore[arg-type]
-    if x > reach[1]:
-        return f"{name} above {figures.plain_number(reach[1])}; "
-    return f"{name} below {figures.plain_number(reach[0])}; " if x < reach[0] else ""
+def _known(columns: ModelColumns, plan: Plan, name: str) -> str:
+    one, known = columns.inputs[name], own_levels(columns, name)
+    number = _cell(plan.codes[one.name])
+    if len(known) == len(one.levels):
+        return f"{number}>0"
+    return f"SUMPRODUCT(({number}={{{','.join(map(str, known))}}})*1)>0"
 
 
-def _beyond_formula(columns: ModelColumns, name: str, cell: str) -> str:
-    reach = _reach(columns, name)
+def _beyond(columns: ModelColumns, name: str) -> str:
+    reach = above(columns, name)
     if reach is None:
-        return ""
-    low, high = reach
-    above = text_literal(f"{name} above {figures.plain_number(high)}; ")
-    below = text_literal(f"{name} below {figures.plain_number(low)}; ")
-    inside = f'IF({cell}>{live.number(high)},{above},IF({cell}<{live.number(low)},{below},""))'
+        return '""'
+    cell = columns.inputs[name].cell
+    high, over, low, under = reach
+    inside = (
+        f'IF({cell}>{live.number(high)},{live.literal(over)},IF({cell}<{live.number(low)},{live.literal(under)},""))'
+    )
     return f'IF(ISNUMBER({cell}),{inside},"")'
 
 
-def _joined(texts: Sequence[str], never: str) -> str:
-    if not texts:
-        return '""'
-    return f'IF({never},"",{"&".join(texts)})'
-
-
-# --- the remark -----------------------------------------------------------------------------------
-
-FAR = "far from the cases: an unusual combination"
-NO_WEIGHT = "give {weight} for the interval of a single case"
-
-
-def _remark(columns: ModelColumns, plan: Plan, row: int, now: Evaluated, entries: Entries) -> Formula:
-    result = columns.result
-    state, problems, beyond, leverage = (
-        f"${address(row, at)}" for at in (columns.state, columns.problems, columns.beyond, columns.leverage)
-    )
-    most = live.number(result.max_leverage * (1 + 1e-9))
-    far = f'IF({leverage}>{most},{text_literal(FAR + "; ")},"")'
-    outside = f'IF({beyond}="",{far},"beyond the data: "&{beyond})'
-    if result.spec.weight is not None:
-        weight = text_literal(NO_WEIGHT.format(weight=result.spec.weight) + "; ")
-        outside = f'{outside}&IF(N({plan.cell(result.spec.weight, row)})>0,"",{weight})'
-    whole = f"IF({state}=1,{problems},{outside})"
-    text = f'IF({state}=0,"",LEFT({whole},MAX(LEN({whole})-2,0)))'
-    return Formula(text, _remark_value(result, now, entries))
-
-
-def _remark_value(result: ModelResult, now: Evaluated, entries: Entries) -> str:
-    if now.state == 0:
-        return ""
-    if now.state == 1:
-        return now.problems[:-2]
-    far = f"{FAR}; " if now.leverage > result.max_leverage * (1 + 1e-9) else ""
-    said = f"beyond the data: {now.beyond}" if now.beyond else far
-    if result.spec.weight is not None:
-        weight = entries.get(result.spec.weight)
-        if not (_is_number(weight) and float(weight) > 0):  # type: ignore[arg-type]
-            said += NO_WEIGHT.format(weight=result.spec.weight) + "; "
-    return said[:-2]
+def _joined(texts: Sequence[str], never: str, parts: int) -> Iterator[str]:
+    for part in range(parts):
+        own = texts[part * A_CELL : (part + 1) * A_CELL]
+        yield f'IF({never},"",{"&".join(own)})' if own else 'IF(1,"","")'

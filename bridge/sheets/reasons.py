@@ -1,157 +1,114 @@
 """Why this number: for a chosen case and model, what each term adds to (or multiplies) the estimate of an average case.
 
-And, for straight lines in one predictor, the line read backwards: which x gave this y.
+On the scale of the fit a term adds the sum of b (x - mean of x) over its columns. From a log response that is a factor;
+from a root it is told as what the estimate gains at that step, which depends on the order of the steps. The steps of
+every model are computed in hidden columns; the visible lines pick those of the model chosen.
 """
 
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping, Sequence
+from collections.abc import Mapping
 from dataclasses import dataclass, replace
 
 import numpy as np
+from numpy.typing import NDArray
 
-from bridge.page.cells import Formula, address, text_literal
+from bridge.page.cells import Format, Formula, Value, address, reference
 from bridge.page.sheet import DropDown
-from bridge.regression import inverse
 from bridge.regression.estimates import mean_in_units
-from bridge.regression.tails import t_quantile
-from bridge.sheets import case_formulas, figures, live, style, words
+from bridge.sheets import backwards, case_formulas, case_values, cases, coefficients, figures, live, style
 from bridge.sheets.book import Book
-from bridge.sheets.case_formulas import Evaluated
+from bridge.sheets.case_values import COMPLETE, Evaluated
 from bridge.sheets.cases import FIRST_ROW, HEADER_ROW, ModelColumns, Plan
 from bridge.sheets.paper import Paper
 from bridge.workbook.contents import Choices, RawSheet
 from bridge.workbook.request import Scalar
+from bridge.workbook.tables import Kind
 
-READINGS = 5
-_INPUT = replace(style.INPUT, align="left")
 TITLE = "Why this number"
-BACK = "Which x gave this y"
+HEADS = ("step", "adds", "times", "so far", "this case", "average")
+AVERAGE_CASE = "a case at the averages"
+_CHOOSE = "choose a case that has an estimate"
+_WIDTHS = (34.0, 15.0, 13.0, 15.0, 15.0, 15.0)
+_INPUT = replace(style.INPUT, align="left")
+_SMALL = replace(style.NUMBER, color=style.QUIET, size=8.0)
+
+Array = NDArray[np.float64]
 
 
-def widths(places: Plan) -> dict[int, float]:
+def widths(plan: Plan) -> dict[int, float]:
     """Column widths of the block."""
-    return {places.why: 34.0, places.why + 1: 15.0, places.why + 2: 13.0, places.why + 3: 15.0, places.why + 4: 15.0}
+    return {plan.why + at: width for at, width in enumerate(_WIDTHS)}
 
 
 def read_choices(raw: RawSheet) -> Choices:
-    """What the user chose and typed in the block, found by its labels."""
+    """What the user chose and typed in the block and under it, found by its labels."""
     title = next((at for at, value in sorted(raw.values.items()) if value == TITLE), None)
     case: Scalar | None = None
     model = ""
     if title is not None:
         case = raw.values.get((title[0] + 1, title[1] + 1))
-        model = str(raw.values.get((title[0] + 2, title[1] + 1), ""))
-    readings: dict[str, tuple[tuple[float, float | None], ...]] = {}
-    for (row, column), value in raw.values.items():
-        if isinstance(value, str) and value.startswith(BACK + ": "):
-            rows = range(row + 2, row + 2 + READINGS)
-            typed = [(_number(raw, (at, column)), _number(raw, (at, column + 4))) for at in rows]
-            kept = tuple((y, weight) for y, weight in typed if y is not None)
-            if kept:
-                readings[value.removeprefix(BACK + ": ")] = kept
-    return Choices(case, model, readings)
+        model = case_values.as_text(raw.values.get((title[0] + 2, title[1] + 1), ""))
+    return Choices(case, model, backwards.read(raw))
 
 
-def _number(raw: RawSheet, at: tuple[int, int]) -> float | None:
-    value = raw.values.get(at)
-    return float(value) if isinstance(value, int | float) and not isinstance(value, bool) else None
-
-
-def put_down(book: Book, paper: Paper, places: Plan, evaluated: Mapping[str, Sequence[Evaluated]]) -> None:
-    """The block, from the case table's header row down, in its own columns."""
-    if not places.models:
-        return
-    row = _why(book, paper, places, evaluated)
-    for columns in places.models:
-        if inverse.serves(columns.result):
-            row = _backwards(book, paper, places, columns, row + 2)
-
-
-# --- why ------------------------------------------------------------------------------------------
-
-
-@dataclass(frozen=True, slots=True)
-class _Chosen:
-    """The chosen case's line and model; None where nothing usable is chosen."""
-
-    columns: ModelColumns
-    now: Evaluated | None
-
-
-def _why(book: Book, paper: Paper, places: Plan, evaluated: Mapping[str, Sequence[Evaluated]]) -> int:
-    top, left = HEADER_ROW - 1, places.why
-    model, name = _default(book, places, evaluated)
-    paper.put(left, TITLE, style.HEADING, row=top)
-    for at, (label, value) in enumerate((("case", name if name != "" else None), ("model", model.model.name))):
-        paper.put(left, label, style.ROW, row=top + 1 + at)
-        paper.put(left + 1, value, _INPUT, row=top + 1 + at)
-    cases = f"{address(FIRST_ROW, 0, absolute=True)}:{address(places.last_row, 0, absolute=True)}"
-    paper.drop_downs.append(DropDown((top + 1, left + 1), (top + 1, left + 1), choices=cases))
-    names = tuple(each.model.name for each in places.models)
-    paper.drop_downs.append(DropDown((top + 2, left + 1), (top + 2, left + 1), choices=names))
-    line = next((i for i, case in enumerate(book.cases) if case.name == name), None) if name != "" else None
-    now = evaluated[model.model.name][line] if line is not None else None
-    return _steps(paper, places, _Chosen(model, now if now is not None and now.state == 2 else None), line)
-
-
-def _default(book: Book, places: Plan, evaluated: Mapping[str, Sequence[Evaluated]]) -> tuple[ModelColumns, Scalar]:
-    """The user's choice where it still holds, else the first model and the first case that has an estimate."""
-    chosen = next((m for m in places.models if m.model.name == book.choices.model), places.models[0])
+def put_down(book: Book, paper: Paper, plan: Plan, evaluated: Mapping[str, Evaluated]) -> int:
+    """The block, from the row above the case table's header down, in its own columns; the row after it."""
+    if not plan.models:
+        return HEADER_ROW
+    model, name = _default(book, plan, evaluated)
+    _put_choice(paper, plan, model, name)
     names = [case.name for case in book.cases]
-    if book.choices.case is not None and book.choices.case in names:
+    line = len(names) - names[::-1].index(name) if name != "" and name in names else _numbered(name, plan)
+    chosen = _Chosen(plan, plan.models.index(model), line, evaluated)
+    block = _Block(book, paper, plan, chosen)
+    block.put_working()
+    block.put_lines()
+    row = block.top + block.steps + 2
+    note = "Steps are against a case at the averages of the rows used. Their order does not change what each adds."
+    paper.put(plan.why, note, replace(style.SUBTITLE, size=8.0), row)
+    return row
+
+
+def _default(book: Book, plan: Plan, evaluated: Mapping[str, Evaluated]) -> tuple[ModelColumns, Scalar]:
+    """The user's choice where it still holds, else the first model and the first case that has an estimate."""
+    wanted = book.choices.model.strip().casefold()
+    chosen = next((m for m in plan.models if m.model.name.casefold() == wanted), plan.models[0])
+    if book.choices.case is not None:
         return chosen, book.choices.case
-    done = evaluated[chosen.model.name]
-    return chosen, next((name for name, now in zip(names, done, strict=False) if name != "" and now.state == 2), "")
-
-
-def _steps(paper: Paper, places: Plan, chosen: _Chosen, at: int | None) -> int:
-    top, left = HEADER_ROW + 2, places.why
-    case, model = address(HEADER_ROW, left + 1, absolute=True), address(HEADER_ROW + 1, left + 1, absolute=True)
-    line = address(top, left + 4, absolute=True)
-    cases = f"{address(FIRST_ROW, 0, absolute=True)}:{address(places.last_row, 0, absolute=True)}"
-    right = replace(style.HEADER, align="right")
-    for j, (text, look) in enumerate((("step", style.HEADER), ("adds", right), ("times", right), ("so far", right))):
-        paper.put(left + j, text, look, row=top)
-    match = f'IF({case}="",0,IF(ISNA(MATCH({case},{cases},0)),0,MATCH({case},{cases},0)))'
-    paper.put(
-        left + 4, Formula(match, 0 if at is None else at + 1), replace(style.FACT, size=8.0, color=style.WHITE), row=top
+    done = evaluated[chosen.model.name].state
+    names = [case.name for case in book.cases]
+    return chosen, next(
+        (name for name, state in zip(names, done, strict=False) if name != "" and state == COMPLETE), ""
     )
-    most = max(len(_terms(each)) for each in places.models)
-    running = 0.0
-    for step in range(most + 1):
-        row = top + 1 + step
-        texts = {"label": [], "adds": [], "times": [], "so far": []}  # type: ignore[var-annotated]
-        for each in places.models:
-            for key, text in _step(each, places, step, line).items():
-                texts[key].append((each, text))
-        value = _step_value(chosen, step)
-        running += value.adds
-        shown = (value.label, value.shown_adds, value.times, _so_far(chosen, running) if value.label else "")
-        code = figures.number_format(_size(chosen), 4)
-        looks = (
-            style.ROW,
-            replace(style.NUMBER, number_format=f"+{code};-{code};0"),
-            replace(style.NUMBER, number_format='"x "0.000'),
-            replace(style.NUMBER, number_format=code),
-        )
-        for j, (key, now, look) in enumerate(zip(texts, shown, looks, strict=True)):
-            paper.put(left + j, Formula(_by_model(places, model, texts[key], line), now), look, row=row)
-    note = "Steps are against a case at the averages of the rows used; their order does not matter for what each adds."
-    paper.put(left, note, replace(style.SUBTITLE, size=8.0), row=top + most + 2)
-    return top + most + 2
 
 
-@dataclass(frozen=True, slots=True)
-class _Step:
-    label: str
-    adds: float
-    shown_adds: float | str
-    times: float | str
+def _numbered(name: Scalar, plan: Plan) -> int:
+    """A line chosen by its number, from 1 on; 0 for none."""
+    whole = isinstance(name, int | float) and not isinstance(name, bool) and 1 <= name <= plan.lines
+    return int(name) if whole else 0
 
 
-def _terms(columns: ModelColumns) -> list[tuple[str, list[int]]]:
+def _put_choice(paper: Paper, plan: Plan, model: ModelColumns, name: Scalar) -> None:
+    top, left = HEADER_ROW - 1, plan.why
+    paper.put(left, TITLE, style.HEADING, top)
+    for at, (label, value) in enumerate((("case", name if name != "" else None), ("model", model.model.name)), 1):
+        paper.put(left, label, style.ROW, top + at)
+        paper.put(left + 1, value, _INPUT, top + at)
+    hint = replace(style.SUBTITLE, size=8.0, indent=1)
+    paper.put(left + 2, "a name, or a line's number for cases without one", hint, top + 1)
+    paper.drop_downs.append(DropDown((top + 1, left + 1), (top + 1, left + 1), choices=plan.down(0)))
+    names = tuple(each.model.name for each in plan.models)
+    if len(",".join(names)) <= 255:
+        paper.drop_downs.append(DropDown((top + 2, left + 1), (top + 2, left + 1), choices=names))
+
+
+# --- a model's steps ----------------------------------------------------------------------------
+
+
+def terms(columns: ModelColumns) -> list[tuple[str, list[int]]]:
+    """The terms in order, each with the positions of its design columns."""
     found: dict[str, list[int]] = {}
     for j, column in enumerate(columns.result.design.columns):
         if column.factors:
@@ -159,7 +116,7 @@ def _terms(columns: ModelColumns) -> list[tuple[str, list[int]]]:
     return list(found.items())
 
 
-def _means(columns: ModelColumns) -> np.ndarray:
+def _means(columns: ModelColumns) -> Array:
     return np.asarray(columns.result.design.matrix.mean(axis=0))
 
 
@@ -167,150 +124,238 @@ def _average(columns: ModelColumns) -> float:
     return float(_means(columns) @ columns.result.fit.coefficients)
 
 
-def _step(columns: ModelColumns, places: Plan, step: int, line: str) -> dict[str, str]:
-    """The formulas of a step for one model: label, what it adds, what it multiplies, and the number so far."""
-    terms, back = _terms(columns), case_formulas.shown_back(columns.result)
-    average = live.number(_average(columns))
-    if step == 0:
-        return {
-            "label": text_literal("a case at the averages"),
-            "adds": '""',
-            "times": '""',
-            "so far": case_formulas.mean_formula(back, average),
+@dataclass(frozen=True, slots=True)
+class _Chosen:
+    """The model chosen by its position, the case by its line from 1 on (0: none)."""
+
+    plan: Plan
+    at: int
+    line: int
+    evaluated: Mapping[str, Evaluated]
+
+    @property
+    def columns(self) -> ModelColumns:
+        """The model."""
+        return self.plan.models[self.at]
+
+    @property
+    def complete(self) -> bool:
+        """Whether the case has an estimate under the model."""
+        return self.has(self.columns)
+
+    def has(self, columns: ModelColumns) -> bool:
+        """Whether the case has an estimate under a model."""
+        return self.line > 0 and int(self.evaluated[columns.model.name].state[self.line - 1]) == COMPLETE
+
+    def adds(self, columns: ModelColumns) -> list[float]:
+        """What each term of a model adds on the fitted scale, the average case first."""
+        terms_of = terms(columns)
+        if not self.has(columns):
+            return [_average(columns), *(0.0 for _ in terms_of)]
+        x, means = self.evaluated[columns.model.name].x[self.line - 1], _means(columns)
+        b = columns.result.fit.coefficients
+        parts = [math.fsum(float(b[j]) * float(x[j] - means[j]) for j in at) for _, at in terms_of]
+        return [_average(columns), *parts]
+
+
+class _Block:
+    """The block while it is put down: a hidden column of steps and one of running estimates per model."""
+
+    def __init__(self, book: Book, paper: Paper, plan: Plan, chosen: _Chosen) -> None:
+        self.book, self.paper, self.plan, self.chosen = book, paper, plan, chosen
+        self.places = coefficients.places(book)
+        self.entries: list[dict[str, Scalar]] = [*cases.entries(book), *({} for _ in range(cases.SPARE))]
+        self.top = HEADER_ROW + 2  # the header of the steps
+        self.steps = max(len(terms(each)) for each in plan.models)
+        count = len(plan.models)
+        first = plan.steps
+        # for every model side by side: labels, averages, what the case holds, what a step adds, the running estimate
+        self.labels, self.averages, self.held, self.adds, self.so_far = (first + count * k for k in range(5))
+        self.line, self.model = (address(HEADER_ROW, first + k, absolute=True) for k in range(2))
+        self.complete = HEADER_ROW + 1  # the row of each model's state
+
+    # --- hidden
+
+    def put_working(self) -> None:
+        """The chosen line and model as numbers, and every model's steps."""
+        left, first = self.plan.why, self.plan.steps
+        case, model = (address(HEADER_ROW + k, left + 1, absolute=True) for k in range(2))
+        names = self.plan.down(0)
+        top = live.span((FIRST_ROW, 0), (FIRST_ROW, 0))
+        named = f'SUMPRODUCT(MAX(EXACT({names},{case})*({names}<>"")*(ROW({names})-ROW({top})+1)))'
+        number = f"IF(ISNUMBER({case}),IF(AND({case}>=1,{case}<={self.plan.lines}),INT({case}),0),0)"
+        line = f'IF(ISERROR({case}),0,IF({case}="",0,IF({named}>0,{named},{number})))'
+        self.paper.put(first, Formula(line, self.chosen.line), _SMALL, HEADER_ROW)
+        texts = [live.literal(each.model.name.casefold()) for each in self.plan.models]
+        which = "+".join(f"EXACT(LOWER(TRIM({model})),{text})*{at}" for at, text in enumerate(texts, 1))
+        self.paper.put(first + 1, Formula(which, self.chosen.at + 1), _SMALL, HEADER_ROW)
+        for at, columns in enumerate(self.plan.models):
+            self._put_model(at, columns)
+
+    def _put_model(self, at: int, columns: ModelColumns) -> None:
+        states = self.plan.down(columns.state)
+        state = int(self.chosen.evaluated[columns.model.name].state[self.chosen.line - 1]) if self.chosen.line else 0
+        text = f"IF({self.line}=0,0,INDEX({states},MAX({self.line},1)))"
+        self.paper.put(self.labels + at, Formula(text, state), _SMALL, self.complete)
+        done = f"{address(self.complete, self.labels + at, absolute=True)}={COMPLETE}"
+        back, adds = case_formulas.shown_back(columns.result), self.chosen.adds(columns)
+        column = self.adds + at
+        for step, (label, positions) in enumerate([(AVERAGE_CASE, []), *terms(columns)]):
+            row = self.top + 1 + step
+            self.paper.put(self.labels + at, label, replace(_SMALL, align="left"), row)
+            average, held, text_held = self._inputs(columns, positions)
+            self.paper.put(self.averages + at, average, _SMALL, row)
+            if text_held:
+                self.paper.put(self.held + at, Formula(f'IF({done},{text_held},"")', held), _SMALL, row)
+            if step == 0:
+                self.paper.put(column, adds[0], _SMALL, row)
+            else:
+                self.paper.put(
+                    column, Formula(f"IF({done},{self._adds(columns, positions)},0)", adds[step]), _SMALL, row
+                )
+            total = f"SUM({live.span((self.top + 1, column), (row, column))})"
+            eta = math.fsum(adds[: step + 1])
+            running = float(mean_in_units(np.array([eta]), back)[0])
+            self.paper.put(self.so_far + at, Formula(case_formulas.mean_formula(back, total), running), _SMALL, row)
+
+    def _adds(self, columns: ModelColumns, at: list[int]) -> str:
+        """Sum of b (x - mean of x) over neighbouring design columns, for the chosen line."""
+        means, fit = _means(columns), columns.result.fit
+        (row, column), _ = self.places[columns.model.name].coefficients
+        sheet = self.book.title("fit coefficients")
+        b = reference(sheet, (row + at[0], column), (row + at[-1], column))
+        cells = self.plan.across(columns, at)
+        if len(at) == 1:
+            return f"{b}*(INDEX({cells},{self.line})-{live.number(float(means[at[0]]))})"
+        middle = math.fsum(float(fit.coefficients[j]) * float(means[j]) for j in at)
+        return f"SUMPRODUCT(MMULT(INDEX({cells},{self.line},0),{b}))-{live.number(middle)}"
+
+    def _inputs(self, columns: ModelColumns, at: list[int]) -> tuple[Value, Scalar, str]:
+        """For a term of one data column: its average, what the chosen case holds, and the formula of that."""
+        names = {f.column for j in at for f in columns.result.design.columns[j].factors}
+        if len(names) != 1:
+            return None, "", ""
+        one = columns.inputs[names.pop()]
+        line = self.chosen.line
+        typed = self.entries[line - 1].get(one.name, "") if self.chosen.has(columns) else ""
+        text = f"INDEX({self.plan.down(one.column)},{self.line})"
+        name = next(f.column for f in columns.result.design.columns[at[0]].factors)
+        if one.levels and case_formulas.shape_of(columns.result, name) is None:
+            return "a mix", typed, text
+        return _average_input(columns, at[0], name), typed, text
+
+    # --- shown
+
+    def put_lines(self) -> None:
+        """The steps of the chosen model."""
+        left, last = self.plan.why, len(self.plan.models) - 1
+        right = replace(style.HEADER, align="right")
+        for at, head in enumerate(HEADS):
+            self.paper.put(left + at, head, style.HEADER if at == 0 else right, self.top)
+        chosen, back = self.chosen, case_formulas.shown_back(self.chosen.columns.result)
+        states = live.span((self.complete, self.labels), (self.complete, self.labels + last))
+        ok = f"INDEX({states},{self.model})={COMPLETE}"
+        known = f"IF({self.model}=0,FALSE,{ok})"
+        log, plain = (self._models_with(kind) for kind in ("log", "plain"))
+        adds = chosen.adds(chosen.columns)
+        code = figures.number_format(_size(chosen.columns), 4)
+        looks = (
+            replace(style.ROW, wrap=True),
+            replace(style.NUMBER, number_format=f"+{code};-{code};0"),
+            replace(style.NUMBER, number_format='"x "0.000'),
+            replace(style.NUMBER, number_format=code),
+            style.NUMBER,
+            replace(style.NUMBER, number_format="General"),
+        )
+        running = [float(mean_in_units(np.array([math.fsum(adds[: at + 1])]), back)[0]) for at in range(len(adds))]
+        labels = [AVERAGE_CASE, *(name for name, _ in terms(chosen.columns))]
+        for step in range(self.steps + 1):
+            row = self.top + 1 + step
+            pick = {name: self._pick(start, row) for name, start in self._columns()}
+            there = f'IF({known},IF({pick["label"]}="",FALSE,TRUE),FALSE)'
+            here = chosen.complete and step < len(labels)
+            values = self._values(step, labels, adds, running) if here else ("",) * 6
+            before = f"-{self._pick(self.so_far, row - 1)}"
+            plain_text = f'IF({plain},{pick["adds"]},IF({log},"",{pick["so far"]}{before}))'
+            texts = (
+                pick["label"],
+                '""' if step == 0 else plain_text,
+                '""' if step == 0 else f'IF({log},EXP({pick["adds"]}),"")',
+                pick["so far"],
+                f'IF({pick["held"]}="","",{pick["held"]})',
+                f'IF({pick["average"]}="","",{pick["average"]})',
+            )
+            if step == 0 and not here:
+                values = (_CHOOSE, "", "", "", "", "")
+            own = (*looks[:4], *self._input_looks(step)) if here else looks
+            for at, (text, value, look) in enumerate(zip(texts, values, own, strict=True)):
+                other = live.literal(_CHOOSE) if step == 0 and at == 0 else '""'
+                self.paper.put(left + at, Formula(f"IF({there},{text},{other})", value), look, row)
+
+    def _input_looks(self, step: int) -> tuple[Format, Format]:
+        """How what the case holds, and its average, are shown."""
+        columns = self.chosen.columns
+        names = {
+            f.column
+            for j in (terms(columns)[step - 1][1] if step else [])
+            for f in columns.result.design.columns[j].factors
         }
-    if step > len(terms):
-        return dict.fromkeys(("label", "adds", "times", "so far"), '""')
-    name, at = terms[step - 1]
-    part = _contribution(columns, places, at, line)
-    so_far = "+".join([average, *(_contribution(columns, places, each, line) for _, each in terms[:step])])
-    log = back is not None and back.kind == "log"
-    plain = back is None
-    return {
-        "label": text_literal(name),
-        "adds": part if plain else '""',
-        "times": f"EXP({part})" if log else '""',
-        "so far": case_formulas.mean_formula(back, f"({so_far})"),
-    }
+        one = columns.inputs[names.pop()] if len(names) == 1 else None
+        if one is not None and one.data is not None and one.data.kind is Kind.DATE:
+            return (replace(style.NUMBER, number_format=figures.DATE),) * 2
+        typed = [each.high for each in columns.result.ranges if one is not None and each.column == one.data_name]
+        return style.NUMBER, replace(
+            style.NUMBER, number_format=figures.number_format(typed[0], 3) if typed else "General"
+        )
+
+    def _columns(self) -> tuple[tuple[str, int], ...]:
+        starts = (self.labels, self.averages, self.held, self.adds, self.so_far)
+        return tuple(zip(("label", "average", "held", "adds", "so far"), starts, strict=True))
+
+    def _pick(self, start: int, row: int) -> str:
+        """The chosen model's cell among those side by side."""
+        cells = live.span((row, start), (row, start + len(self.plan.models) - 1))
+        return f"INDEX({cells},{self.model})"
+
+    def _models_with(self, kind: str) -> str:
+        """Whether the chosen model is one whose steps are factors (`log`) or sums (`plain`)."""
+        found = []
+        for at, columns in enumerate(self.plan.models, 1):
+            back = case_formulas.shown_back(columns.result)
+            if (back.kind if back is not None else "plain") == kind:
+                found.append(f"{self.model}={at}")
+        return f"OR({','.join(found)})" if found else "FALSE"
+
+    def _values(self, step: int, labels: list[str], adds: list[float], running: list[float]) -> tuple[Scalar, ...]:
+        columns = self.chosen.columns
+        back = case_formulas.shown_back(columns.result)
+        positions = [] if step == 0 else terms(columns)[step - 1][1]
+        average, held, _ = self._inputs(columns, positions)
+        gain: Scalar = ""
+        times: Scalar = ""
+        if step and back is None:
+            gain = adds[step]
+        elif step and back is not None and back.kind == "log":
+            times = math.exp(adds[step])
+        elif step:
+            gain = running[step] - running[step - 1]
+        shown = average if isinstance(average, float | str) else ""
+        return labels[step], gain, times, running[step], held, shown
 
 
-def _contribution(columns: ModelColumns, places: Plan, at: Sequence[int], line: str) -> str:
-    """Sum of b (x - mean x) over a term's columns, for the chosen line."""
-    means = _means(columns)
-    parts = []
-    for j in at:
-        column = columns.x + j
-        cells = f"{address(FIRST_ROW, column, absolute=True)}:{address(places.last_row, column, absolute=True)}"
-        b = live.number(float(columns.result.fit.coefficients[j]))
-        parts.append(f"{b}*(INDEX({cells},{line})-{live.number(float(means[j]))})")
-    return f"({'+'.join(parts)})"
+def _average_input(columns: ModelColumns, at: int, name: str) -> float:
+    """The value of a number column at which its design column has its mean."""
+    mean, kind = float(_means(columns)[at]), columns.result.design.columns[at].factors[0].kind
+    if kind == "log":
+        return math.exp(mean)
+    if kind == "root":
+        return mean**2
+    if kind == "reciprocal":
+        return 1 / mean if mean else math.nan
+    return next((each.mean for each in columns.result.ranges if each.column == name), mean)
 
 
-def _by_model(places: Plan, model: str, texts: Sequence[tuple[ModelColumns, str]], line: str) -> str:
-    """The chosen model's formula; nothing without a case, or where the case has no estimate under the model."""
-    made = '""'
-    for columns, text in reversed(texts):
-        first, last = (address(row, columns.state, absolute=True) for row in (FIRST_ROW, places.last_row))
-        states = f"{first}:{last}"
-        inside = text if text == '""' else f'IF(INDEX({states},{line})=2,{text},"")'
-        longer = f"IF({model}={text_literal(columns.model.name)},{inside},{made})"
-        made = longer if len(longer) < live.MOST else made
-    return f'IF({line}=0,"",{made})'
-
-
-def _step_value(chosen: _Chosen, step: int) -> _Step:
-    columns, now = chosen.columns, chosen.now
-    terms = _terms(columns)
-    if now is None or step > len(terms):
-        return _Step("", 0.0, "", "")
-    if step == 0:
-        return _Step("a case at the averages", _average(columns), "", "")
-    name, at = terms[step - 1]
-    means, b = _means(columns), columns.result.fit.coefficients
-    adds = math.fsum(float(b[j]) * (now.x[j] - float(means[j])) for j in at)
-    back = case_formulas.shown_back(columns.result)
-    times: float | str = math.exp(adds) if back is not None and back.kind == "log" else ""
-    return _Step(name, adds, adds if back is None else "", times)
-
-
-def _so_far(chosen: _Chosen, eta: float) -> float:
-    back = case_formulas.shown_back(chosen.columns.result)
-    return case_formulas.one_value(mean_in_units, eta, back)
-
-
-def _size(chosen: _Chosen) -> float:
-    if case_formulas.shown_back(chosen.columns.result) is None and chosen.columns.result.back is not None:
+def _size(columns: ModelColumns) -> float:
+    if case_formulas.shown_back(columns.result) is None and columns.result.back is not None:
         return 1.0
-    return float(abs(chosen.columns.result.observed).max()) or 1.0
-
-
-# --- backwards --------------------------------------------------------------------------------------
-
-
-def _backwards(book: Book, paper: Paper, places: Plan, columns: ModelColumns, row: int) -> int:
-    """Readings y typed in cream; x and Fieller's interval beside them."""
-    result, left = columns.result, places.why
-    spec = result.spec
-    x_name, y_name = spec.terms[0].column, spec.response
-    paper.put(left, f"{BACK}: {columns.model.name}", style.HEADING, row=row)
-    right = replace(style.HEADER, align="right")
-    level = f"{100 * spec.level:.10g}%"
-    heads = [f"{y_name} (one reading)", x_name, f"{level} low", f"{level} high"]
-    if spec.weight is not None:
-        heads.append(spec.weight)
-    for j, text in enumerate(heads):
-        paper.put(left + j, text, right if j else style.HEADER, row=row + 1)
-    typed = book.choices.readings.get(columns.model.name, ())
-    code = figures.number_format(float(abs(result.ranges[0].high)) or 1.0, 6) if result.ranges else "General"
-    for at in range(READINGS):
-        line = row + 2 + at
-        y, weight = typed[at] if at < len(typed) else (None, None)
-        paper.put(left, y, style.INPUT_NUMBER, row=line)
-        if spec.weight is not None:
-            paper.put(left + 4, weight, style.INPUT_NUMBER, row=line)
-        values = _values(columns, y, weight)
-        texts = _inverse_formulas(columns, address(line, left), address(line, left + 4))
-        for j, (text, value) in enumerate(zip(texts, values, strict=True)):
-            paper.put(left + 1 + j, Formula(text, value), replace(style.NUMBER, number_format=code), row=line)
-    note = "Interval by Fieller (1954): for one further reading, and the line's own uncertainty."
-    if spec.weight is not None:
-        note += f" It needs the reading's {words.name_in(columns.model.table, spec.weight)}."
-    paper.put(left, note, replace(style.SUBTITLE, size=8.0), row=row + 2 + READINGS)
-    return row + 2 + READINGS
-
-
-def _values(
-    columns: ModelColumns, y: float | None, weight: float | None
-) -> tuple[float | str, float | str, float | str]:
-    if y is None:
-        return "", "", ""
-    if columns.result.spec.weight is not None and (weight is None or weight <= 0):
-        return inverse.estimate(columns.result, y).x, "", ""
-    found = inverse.estimate(columns.result, y, weight=1.0 if weight is None else weight)
-    low = found.low if found.low is not None else "unbounded"
-    return found.x, low, found.high if found.high is not None else "unbounded"
-
-
-def _inverse_formulas(columns: ModelColumns, y: str, weight: str) -> tuple[str, str, str]:
-    result = columns.result
-    fit, one = result.fit, result.spec.intercept
-    b, v = float(fit.coefficients[-1]), fit.covariance
-    a, vaa, vab, vbb = (float(fit.coefficients[0]), float(v[0, 0]), float(v[0, 1]), float(v[1, 1])) if one else (
-        0.0, 0.0, 0.0, float(v[0, 0])
-    )  # fmt: skip
-    t2 = t_quantile(result.spec.level, fit.df_interval) ** 2
-    n = live.number
-    x = f"(({y}-{n(a)})/{n(b)})"
-    weighted = result.spec.weight is not None
-    reading = f"{n(fit.residual_sd**2)}/{weight}" if weighted else n(fit.residual_sd**2)
-    own = f"({reading}+{n(vaa)}+2*{x}*{n(vab)}+{x}*{x}*{n(vbb)})"
-    square = b * b - t2 * vbb
-    half = f"({n(t2)}*({n(vab)}+{x}*{n(vbb)}))"
-    root = f"({half}*{half}+{n(square)}*{n(t2)}*{own})"
-
-    ends = ['"unbounded"'] * 2
-    if square > 0:
-        ends = [f"{x}+({half}{sign}SQRT({root}))/{n(square)}" for sign in "-+"]
-    if weighted:
-        ends = [f'IF(N({weight})>0,{end},"")' for end in ends]
-    low, high = (f'IF(ISNUMBER({y}),{end},"")' for end in ends)
-    return f'IF(ISNUMBER({y}),{x},"")', low, high
+    return float(abs(columns.result.observed).max()) or 1.0

@@ -360,7 +360,7 @@ def _width(column: BlockColumn, look: Format) -> float:
         finite = column.values[np.isfinite(column.values)]
         ends = (float(finite.min()), float(finite.max())) if len(finite) else (0.0,)
         return measure.widest(figures.shown(value, look.number_format) for value in ends)
-    return min(WIDEST_TEXT, measure.widest(set(column.values)) + 1.5 * look.indent)
+    return min(WIDEST_TEXT, measure.widest(set(map(str, column.values))) + 1.5 * look.indent)
 
 
 def _last_column(section: Section) -> int:
