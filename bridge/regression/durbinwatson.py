@@ -7,6 +7,7 @@ The p is two-sided: twice the smaller tail.
 
 from __future__ import annotations
 
+from functools import lru_cache
 from itertools import pairwise
 
 import numpy as np
@@ -55,7 +56,7 @@ def _exact(d: float, q: Array) -> float:
 def _negative(weights: Array) -> float:
     """Probability that sum of weights times squared standard normals is negative (Imhof 1961, at zero)."""
     scaled = weights / np.sqrt(np.mean(weights**2))
-    nodes, steps = np.polynomial.legendre.leggauss(64)
+    nodes, steps = _gauss()
     total = 0.0
     # The integrand dies off like a product over all weights; u = 1/(1 - v)^2 - 1 brings it smoothly within [0, 1].
     edges = np.linspace(0.0, 1.0, 17)
@@ -67,6 +68,12 @@ def _negative(weights: Array) -> float:
         damped = np.exp(-np.log1p(products**2).sum(axis=1) / 4)
         total += float(np.sum(steps * np.sin(angle) * damped / (u * (1 - v) ** 3))) * (high - low)
     return float(np.clip(0.5 - total / np.pi, 0.0, 1.0))
+
+
+@lru_cache(maxsize=1)
+def _gauss() -> tuple[Array, Array]:
+    """Gauss and Legendre's 64 nodes and weights."""
+    return np.polynomial.legendre.leggauss(64)
 
 
 def _beta(d: float, kernel: Kernel, order: Rows) -> float:

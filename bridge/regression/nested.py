@@ -1,15 +1,24 @@
-"""Which models are contained in which, found from what their columns span, and the partial F of what comes on top."""
+"""Which models are contained in which, found from what their columns span, and the partial F of what comes on top.
+
+Where the larger model's standard errors are not the ordinary ones, F is Wald's, from its covariance: with the ordinary
+covariance the two are the same number.
+"""
 
 from __future__ import annotations
 
 from collections.abc import Mapping
 
 import numpy as np
+from numpy.typing import NDArray
+from scipy.linalg import solve_triangular
 
 from bridge.regression.auxiliary import Rows, even_sample, spanned
 from bridge.regression.results import Design, ModelResult, Nested
-from bridge.regression.spec import FitBy
+from bridge.regression.spec import Errors, FitBy
 from bridge.regression.tails import f_upper
+from bridge.regression.threads import over_blocks
+
+Array = NDArray[np.float64]
 
 SPANNED = 1e-9  # a column's distance from another model's columns, over its length, below which it is among them
 
@@ -71,7 +80,32 @@ def _not_among(a: Design, b: Design, rows: Rows) -> list[int]:
 
 def _partial_f(small: str, a: ModelResult, large: str, b: ModelResult) -> Nested:
     df, rest = a.fit.df_residual - b.fit.df_residual, b.fit.df_residual
+    if b.spec.errors is not Errors.ORDINARY:
+        f = _wald(a, b, df)
+        return Nested(small, large, f, df, int(b.fit.df_interval), f_upper(f, (df, b.fit.df_interval)), robust=True)
     gained = max(a.fit.ss_residual - b.fit.ss_residual, 0.0) / df
     error = b.fit.ss_residual / rest
     f = gained / error if error > 0 else (float("inf") if gained > 0 else float("nan"))
     return Nested(small, large, f, df, rest, f_upper(f, (df, rest)))
+
+
+def _wald(a: ModelResult, b: ModelResult, df: int) -> float:
+    """Wald's F that b's coefficients in the directions beyond a's columns are zero; NaN where its rank is too low."""
+    fit, size = b.fit, len(b.fit.coefficients)
+    r = solve_triangular(fit.r_inverse, np.eye(size))
+    spanned_by_a = np.sum(over_blocks(fit.n, lambda rows: _products(a, b, rows)), axis=0)
+    turned, _ = np.linalg.qr(spanned_by_a / np.sqrt(np.sum(spanned_by_a**2, axis=0)), mode="complete")
+    beyond = turned[:, size - df :]
+    root = beyond.T @ r @ fit.covariance_factor
+    left, values, _ = np.linalg.svd(root)
+    if fit.df_interval < df or values[-1] <= 1e-7 * values[0]:
+        return float("nan")
+    moved = left.T @ (beyond.T @ (r @ fit.coefficients))
+    return float(np.sum((moved / values) ** 2)) / df
+
+
+def _products(a: ModelResult, b: ModelResult, rows: slice) -> Array:
+    """a's columns in the coordinates of b's orthonormal basis, the rows' part."""
+    q = b.design.matrix[rows] @ b.fit.r_inverse
+    weighted = q if b.fit.weights is None else q * b.fit.weights[rows, None]
+    return np.asarray(weighted.T @ a.design.matrix[rows])

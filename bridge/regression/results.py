@@ -296,7 +296,10 @@ class ModelResult:
 
 @dataclass(frozen=True, slots=True)
 class Nested:
-    """Model `small` is contained in `large` (same rows, response, weights): partial F on (df, df_residual)."""
+    """Model `small` is contained in `large` (same rows, response, weights): partial F on (df, df_residual).
+
+    `robust`: Wald's F with the larger model's own covariance, and its degrees of freedom of t as `df_residual`.
+    """
 
     small: str
     large: str
@@ -304,6 +307,7 @@ class Nested:
     df: int
     df_residual: int
     p: float
+    robust: bool = False
 
 
 @dataclass(frozen=True, slots=True)

@@ -9,8 +9,18 @@ import pytest
 import statsmodels.api as sm
 
 from bridge.regression.core import fit_model
-from bridge.regression.nested import compare
-from bridge.regression.spec import CategoryTerm, CrossedTerm, FitBy, Levels, ModelSpec, NumberTerm, Observations, Shape
+from bridge.regression.nested import _wald, compare
+from bridge.regression.spec import (
+    CategoryTerm,
+    CrossedTerm,
+    Errors,
+    FitBy,
+    Levels,
+    ModelSpec,
+    NumberTerm,
+    Observations,
+    Shape,
+)
 from tests.regression.problems import TWO, rows
 
 KIND = Levels(np.arange(40) * 7 // 3 % 3, ("p", "q", "r"))
@@ -84,6 +94,45 @@ def test_partial_f(weight):
     assert (found.f, found.p, found.df, found.df_residual) == pytest.approx((f, p, df, 37), rel=1e-9)
     t = results["B"].fit.t[-1]
     assert found.f == pytest.approx(t * t, rel=1e-10)
+
+
+@pytest.mark.parametrize("weight", [None, "w"])
+@pytest.mark.parametrize(
+    ("errors", "kind"), [(Errors.UNEVEN_SPREAD, "HC3"), (Errors.GROUPED, "cluster"), (Errors.SERIAL, "HAC")]
+)
+def test_robust_covariances_judge_by_themselves(errors, kind, weight):
+    """statsmodels' f_test of the coefficients added, with the same covariance; by the larger model's errors."""
+    small = replace(BASE, terms=TWO[:1], weight=weight)
+    large = replace(BASE, terms=(*TWO, CategoryTerm("kind", base="p")), weight=weight)
+    large = replace(large, errors=errors, group="group", order="time", lags=2)
+    results = {"A": fit_model(small, ROWS), "B": fit_model(large, ROWS)}
+    (found,) = compare(results)
+    root = np.ones(40) if weight is None else np.sqrt(ROWS.numbers("w"))
+    order = np.argsort(ROWS.numbers("time"))
+    options = {"cluster": {"groups": ROWS.numbers("group")[order]}, "HAC": {"maxlags": 2, "use_correction": True}}
+    x = results["B"].design.matrix * root[:, None]
+    model = sm.OLS((ROWS.numbers("y") * root)[order], x[order])
+    theirs = model.fit(cov_type=kind, cov_kwds=options.get(kind), use_t=True).f_test(np.eye(5)[2:])
+    assert found.robust
+    assert (found.f, found.p) == pytest.approx((theirs.fvalue, theirs.pvalue), rel=1e-8)
+    assert (found.df, found.df_residual) == (3, 9 if kind == "cluster" else 35)
+
+
+def test_walds_f_with_the_ordinary_covariance_is_the_partial_f():
+    small = fit_model(replace(BASE, terms=(NumberTerm("a"),)), ROWS)
+    large = fit_model(replace(BASE, terms=(*TWO, CategoryTerm("kind"))), ROWS)
+    (found,) = compare({"A": small, "B": large})
+    assert not found.robust
+    assert _wald(small, large, 3) == pytest.approx(found.f, rel=1e-10)
+
+
+def test_fewer_groups_than_coefficients_added():
+    thirds = Observations({**ROWS.columns, "group": np.arange(40.0) // 14}, 40)
+    small = fit_model(replace(BASE, terms=TWO[:1]), thirds)
+    large = replace(BASE, terms=(*TWO, CategoryTerm("kind")), errors=Errors.GROUPED, group="group")
+    (found,) = compare({"A": small, "B": fit_model(large, thirds)})
+    assert np.isnan(found.f)
+    assert np.isnan(found.p)
 
 
 def test_many_rows():
