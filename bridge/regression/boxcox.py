@@ -1,4 +1,8 @@
-"""Which power of the response suits the predictors: the profile likelihood of Box & Cox (1964)."""
+"""Which power of the response suits the predictors: the profile likelihood of Box & Cox (1964).
+
+The response is taken over its geometric mean. With an intercept that changes nothing; without one the power would
+otherwise depend on the response's unit (Schlesselman 1971, "Power families: a note on the Box and Cox transformation").
+"""
 
 from __future__ import annotations
 

@@ -1,7 +1,10 @@
 """Tests of what a fit takes for granted: even spread, normality, independence, the right form.
 
-Weighted fits are tested on the rows times the roots of their weights. statsmodels' het_breuschpagan, het_white,
-acorr_breusch_godfrey and linear_reset have the same definitions for unweighted fits with an intercept.
+Weighted fits: residuals, and the columns of the tests of order and form, are times the roots of the weights; Koenker's
+and White's test look how the spread of those residuals goes with the columns as they are. statsmodels'
+het_breuschpagan, het_white, acorr_breusch_godfrey and linear_reset have the same definitions for unweighted fits with
+an intercept. Without one, Koenker's and White's auxiliary regressions still have a constant (theirs are then refused),
+Breusch and Godfrey's has none (theirs adds one).
 """
 
 from __future__ import annotations

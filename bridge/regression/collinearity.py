@@ -1,7 +1,8 @@
 """How far the predictors overlap: generalised variance inflation, condition indexes, variance shares.
 
 Fox & Monette (1992) for terms of several columns; Belsley, Kuh & Welsch (1980) for condition indexes and shares
-(columns scaled to length 1, intercept included, not centred).
+(columns scaled to length 1, intercept included, not centred). Without an intercept variance inflation is about zero,
+not about the means. Weighted fits: of the rows times the roots of their weights.
 """
 
 from __future__ import annotations

@@ -1,7 +1,8 @@
 """Simulated coverage of the 95% intervals for the mean and for a single case.
 
 `python -m tests.regression.coverage [--repeats 4000]` prints, model by model, in what share of the repeats the truth
-lay within. `test_coverage.py` runs a few repeats of each. The design stays, the response is drawn anew.
+lay within. `test_coverage.py` runs a few repeats of each. The design stays, the response is drawn anew, each model
+from random numbers of its own.
 
 Each model is drawn from what its intervals claim to serve. Some lines are there as cautions and claim less:
 - HC3, grouped and serial errors are right for many rows, groups, lags; the lines with few show by how much they fall
@@ -23,6 +24,7 @@ from bridge.regression.estimates import estimate
 from bridge.regression.spec import CategoryTerm, Errors, FitBy, Levels, ModelSpec, NumberTerm, Observations, Shape
 
 REPEATS = 4_000
+DRAWS = 25  # single cases at each new case, each repeat
 
 Noise = Callable[[np.random.Generator, Observations], np.ndarray]
 
@@ -72,7 +74,7 @@ def run(scenario: Scenario, repeats: int, seed: int = 1) -> Covered:
         y = np.exp(eta) if shape is Shape.LOG else eta
         result = fit_model(scenario.spec, Observations({**scenario.design.columns, "y": y}, scenario.design.n))
         found = estimate(result, scenario.cases, weights)
-        drawn = truth + scenario.case_noise(rng, scenario.cases)
+        drawn = truth + np.array([scenario.case_noise(rng, scenario.cases) for _ in range(DRAWS)])
         mean = truth
         if shape is Shape.LOG:  # of a lognormal response
             mean, drawn = np.exp(truth + 0.3**2 / 2), np.exp(drawn)
@@ -192,8 +194,8 @@ def main() -> None:
     print(
         f"{'model':38s} {'mean interval':>18s} {'case interval':>18s}   (share within, 2 Monte-Carlo standard errors)"
     )
-    for scenario in scenarios():
-        found = run(scenario, asked.repeats)
+    for at, scenario in enumerate(scenarios()):
+        found = run(scenario, asked.repeats, seed=at)
         mean = f"{found.mean:.1%} ± {2 * found.mean_error:.1%}{'' if scenario.mean else ' *'}"
         case = f"{found.case:.1%} ± {2 * found.case_error:.1%}{'' if scenario.case else ' *'}"
         print(f"{scenario.name:38s} {mean:>18s} {case:>18s}", flush=True)
