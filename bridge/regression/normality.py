@@ -1,7 +1,8 @@
 """Are the residuals normal? Shapiro & Wilk's W to 5,000 rows, Anderson & Darling's A2 beyond.
 
 W and its p by Royston (1995, algorithm AS R94); A2 with mean and spread estimated and its p by D'Agostino & Stephens
-(1986). scipy.stats.shapiro is the same algorithm with normal quantiles of 9 digits (AS 111) where these have 15. Written out here because importing a statistics library costs more than the whole fit of a usual workbook.
+(1986). scipy.stats.shapiro is the same algorithm with normal quantiles of 9 digits (AS 111) where these have 15.
+Written out here because importing a statistics library costs more than the whole fit of a usual workbook.
 """
 
 from __future__ import annotations
