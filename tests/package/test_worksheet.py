@@ -195,7 +195,7 @@ def test_block_rows_of_every_kind() -> None:
         '<c r="AD10" s="2"><v>3</v></c>',
         '<c r="Z11" s="2"><f>HYPERLINK("#A6","100% &amp; 11")</f><v>2</v></c>'
         '<c r="AA11" s="2"/>'
-        '<c r="AB11" s="2"/>'
+        '<c r="AB11" s="2" t="str"><f>A11</f><v></v></c>'
         '<c r="AC11" s="2" t="inlineStr"><is><t xml:space="preserve">%d &amp; &lt;</t></is></c>'
         '<c r="AD11" s="2"><v>4</v></c>',
     ]
