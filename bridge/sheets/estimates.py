@@ -55,7 +55,7 @@ def lay_out(book: Book) -> Sheet:
     """The sheet `fit estimates`."""
     plan = cases.plan(book)
     paper = Paper("fit estimates", _widths(book, plan))
-    top.put(paper, book, "Estimate new cases", _WHAT, max(plan.why - 2, 4))
+    top.put(paper, book, "Estimate new cases", _WHAT, _first_page(plan))
     _guide(paper, plan)
     _heads(paper, plan)
     lines = [*cases.entries(book), *({} for _ in range(cases.SPARE))]
@@ -140,6 +140,11 @@ def _word(value: Scalar) -> str:
 
 
 # --- above the lines ----------------------------------------------------------------------------
+
+
+def _first_page(plan: Plan) -> int:
+    """The last column of the first printed page: the case and the first model's figures."""
+    return plan.models[0].first + len(plan.models[0].headers) - 1 if plan.models else 4
 
 
 def _guide(paper: Paper, plan: Plan) -> None:
