@@ -15,10 +15,11 @@ from bridge.regression.results import Alias, ModelResult
 from bridge.regression.spec import Errors, FitBy
 from bridge.sheets import effects, figures, measure, recheck, style, top, words
 from bridge.sheets.book import Book, ModelSheet
-from bridge.sheets.paper import Paper
+from bridge.sheets.paper import ROW_POINTS, Paper
 
 _WIDTHS = {0: 26.0, 1: 16.0, 2: 15.0, 3: 9.0, 4: 9.0, 5: 15.0, 6: 15.0, 7: 13.0, 8: 8.0, 9: 50.0}
 _LAST = 9
+_PAGE_POINTS = 620.0  # what a landscape A4 page holds at this width
 _WORKING = _LAST + 2  # the first column of the working figures
 
 _MADE = {
@@ -105,6 +106,8 @@ def _widths(book: Book) -> dict[int, float]:
 
 def _block(book: Book, paper: Paper, model: ModelSheet, result: ModelResult, place: Place) -> None:
     response = words.axis_title(model.table, result.spec.response, result.spec.response_shape)
+    below = len(result.design.columns) + _rows_below(model, result)
+    paper.room((2 + below) * ROW_POINTS, _PAGE_POINTS)
     _working(paper, result, place)
     paper.heading(f"{model.name}  {response}, {words.form(result.spec)}")
     level = f"{100 * result.spec.level:.10g}%"

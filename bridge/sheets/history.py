@@ -72,7 +72,14 @@ def lay_out(book: Book) -> Sheet:
         paper.put(0, f"The newest {MOST_LINES} lines are kept.", style.SUBTITLE)
         paper.row += 1
     seal.put_down(book, paper, paper.row + 1)
-    return paper.sheet(_LAST, title=book.title("fit history"), freeze=(4, 0), tab_color=style.TAB_DETAIL, fit_width=2)
+    return paper.sheet(
+        _LAST,
+        title=book.title("fit history"),
+        freeze=(4, 0),
+        title_columns=(0, 1),
+        tab_color=style.TAB_DETAIL,
+        fit_width=2,
+    )
 
 
 def read(raw: RawSheet) -> tuple[HistoryLine, ...]:

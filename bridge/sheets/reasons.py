@@ -17,7 +17,7 @@ from numpy.typing import NDArray
 from bridge.page.cells import Format, Formula, Value, address, reference
 from bridge.page.sheet import DropDown
 from bridge.regression.estimates import mean_in_units
-from bridge.sheets import backwards, case_formulas, case_values, cases, coefficients, figures, live, style
+from bridge.sheets import backwards, case_formulas, case_values, cases, coefficients, figures, live, style, words
 from bridge.sheets.book import Book
 from bridge.sheets.case_values import COMPLETE, Evaluated
 from bridge.sheets.cases import FIRST_ROW, HEADER_ROW, ModelColumns, Plan
@@ -27,7 +27,8 @@ from bridge.workbook.request import Scalar
 from bridge.workbook.tables import Kind
 
 TITLE = "Why this number"
-HEADS = ("step", "adds", "times", "so far", "this case", "average")
+SO_FAR = "so far"
+HEADS = ("step", "adds", "times", SO_FAR, "this case", "average")
 AVERAGE_CASE = "a case at the averages"
 _CHOOSE = "choose a case that has an estimate"
 _WIDTHS = (34.0, 15.0, 13.0, 15.0, 15.0, 15.0)
@@ -197,6 +198,7 @@ class _Block:
         state = int(self.chosen.evaluated[columns.model.name].state[self.chosen.line - 1]) if self.chosen.line else 0
         text = f"IF({self.line}=0,0,INDEX({states},MAX({self.line},1)))"
         self.paper.put(self.labels + at, Formula(text, state), _SMALL, self.complete)
+        self.paper.put(self.labels + at, self._so_far_head(columns), replace(_SMALL, align="left"), self.top)
         done = f"{address(self.complete, self.labels + at, absolute=True)}={COMPLETE}"
         back, adds = case_formulas.shown_back(columns.result), self.chosen.adds(columns)
         column = self.adds + at
@@ -217,6 +219,14 @@ class _Block:
             eta = math.fsum(adds[: step + 1])
             running = float(mean_in_units(np.array([eta]), back)[0])
             self.paper.put(self.so_far + at, Formula(case_formulas.mean_formula(back, total), running), _SMALL, row)
+
+    def _so_far_head(self, columns: ModelColumns) -> str:
+        """`so far (hours)`."""
+        spec = columns.result.spec
+        unit = words.unit_in(columns.model.table, spec.response)
+        as_fitted = columns.result.back is not None and case_formulas.shown_back(columns.result) is None
+        shape = f"{spec.response_shape.value} " if as_fitted else ""
+        return f"{SO_FAR} ({shape}{unit})" if unit else SO_FAR
 
     def _adds(self, columns: ModelColumns, at: list[int]) -> str:
         """Sum of b (x - mean of x) over neighbouring design columns, for the chosen line."""
@@ -252,6 +262,10 @@ class _Block:
         right = replace(style.HEADER, align="right")
         for at, head in enumerate(HEADS):
             self.paper.put(left + at, head, style.HEADER if at == 0 else right, self.top)
+        said = f"IF({self.model}=0,{live.literal(SO_FAR)},{self._pick(self.labels, self.top)})"
+        self.paper.put(
+            left + HEADS.index(SO_FAR), Formula(said, self._so_far_head(self.chosen.columns)), right, self.top
+        )
         chosen, back = self.chosen, case_formulas.shown_back(self.chosen.columns.result)
         states = live.span((self.complete, self.labels), (self.complete, self.labels + last))
         ok = f"INDEX({states},{self.model})={COMPLETE}"

@@ -38,10 +38,10 @@ CHANGED = "DATA HAVE CHANGED since this fit: save with the bridge running"
 NOTHING = "nothing is fitted yet"
 
 FIRST_ROW = 6  # of the lines on `fit history`, zero-based: under the sheet's top, a heading and a header
-HEADS = ("what", "cells", "at the fit", "now", "same")
-_WORDS, _SAME = HEADS.index("now"), HEADS.index("same")
-WORKING_HEADS = ("what", "cells", "now", "at the fit", "may differ by", "same")
-_WORKING_SAME = WORKING_HEADS.index("same")
+HEADS = ("what", "cells", "at the fit", "now", "true")
+_WORDS, _SAME = HEADS.index("now"), HEADS.index("true")
+WORKING_HEADS = ("what", "cells", "now", "at the fit", "may differ by", "true")
+_WORKING_SAME = WORKING_HEADS.index("true")
 _TEXTS = len(WORKING_HEADS) + 1  # the column from which a line's texts are listed, to the right
 
 _PART = 1_000  # rows
@@ -140,9 +140,9 @@ def _put_words(book: Book, paper: Paper, found: Sequence[tuple[_Line, int, int]]
     paper.put(0, "Is this still the same data?", style.HEADING, top)
     paper.heights[top] = 20.0
     for column, head in enumerate(HEADS):
-        paper.put(column, head, style.HEADER, top + 1)
+        paper.put(column, head, style.HEADER_RIGHT if column == _SAME else style.HEADER, top + 1)
     for at, (line, first, last) in enumerate(found):
-        same = f"AND({live.span((first, _WORKING_SAME), (last, _WORKING_SAME))})"
+        same = f"AND({live.span((first, _WORKING_SAME), (last, _WORKING_SAME))})" if line.checks else "AND(TRUE)"
         _put_line(paper, FIRST_ROW + at, (line.what, line.cells, line.held), same)
     row = FIRST_ROW + len(found)
     for name in [model.name for model, _ in book.fitted]:
@@ -160,7 +160,7 @@ def _put_line(paper: Paper, row: int, texts: tuple[str, str, str], same: str, bo
         paper.put(column, text, replace(look, bold=bold), row)
     said = f"IF({address(row, _SAME)},{text_literal(SAME)},{text_literal(OTHER)})"
     paper.put(_WORDS, Formula(said, SAME), replace(style.ROW_STRONG, color=style.DEEP), row)
-    paper.put(_SAME, Formula(same, True), style.FACT, row)
+    paper.put(_SAME, Formula(same, True), replace(style.FACT, size=8.0, align="right"), row)
 
 
 def _runs(numbers: Sequence[int]) -> Iterator[Run]:
